@@ -1,0 +1,7 @@
+"""`python -m chansim`."""
+
+import sys
+
+from chansim.cli import main
+
+sys.exit(main())

@@ -1,0 +1,367 @@
+"""Model file to canonical scene: `open_scene`; what a file has and lacks: `describe_scene`."""
+
+import textwrap
+import tomllib
+from pathlib import Path
+
+import numpy as np
+import xarray as xr
+
+from chansim._version import __version__
+from chansim.errors import SceneError
+from chansim.scene.checks import Tally
+from chansim.scene.columns import HUMIDITY_ROUTES, canonical_columns, make_plan, require
+from chansim.scene.grids import find_grid, grid_mapping_variable
+from chansim.scene.humidity import SATURATION
+from chansim.scene.recognition import QUANTITIES, recognise
+from chansim.scene.sources import open_source, refusing_damage
+from chansim.scene.variables import VARIABLES
+from chansim.scene.vertical import level_pressure, on_levels, runs_upward
+
+# above this size of one time, values are read in chunks when they are needed
+_EAGER_BYTES = 1.5e9
+
+
+def open_scene(source, *, time=None, mapping=None, select=None, chunks=None, relative_humidity_over=None):
+    """A model file as a canonical scene.
+
+    Parameters
+    ----------
+    source : path of a GRIB or CF netCDF file or a Zarr store, or an xarray.Dataset
+    time : valid time, anything `numpy.datetime64` takes; needed when the source holds several, or none
+    mapping : {quantity: name in the source, or {"name": ..., "units": ...}, or "" to leave it out}, or the
+        path of a TOML file with such a table [variables]; only for what is not recognised by itself
+    select : {dimension: value} for dimensions that are neither space nor time, e.g. an ensemble
+    chunks : None reads now (unless one time is larger than 1.5 GB); "auto" or a dict of sizes keeps the
+        scene lazy
+    relative_humidity_over : "water", "ice_below_freezing" or "mixed": what the source means by relative
+        humidity; None is over water (WMO), "mixed" for files of ECMWF, which documents it so
+
+    Returns
+    -------
+    xarray.Dataset : names and units of `scene.variables`; dimensions `level` (top to surface) first, then
+        those of the source; coordinates `latitude`, `longitude` for every column and scalar `time`;
+        `pressure` over `level` alone on pressure levels; `column_valid` is False where needed values are
+        missing; `grid_mapping` where the grid is projected or regular. Attributes: `recognised` (list of
+        lines), `defaulted`, `adjusted` (lines), `masked_columns` (number, absent while lazy).
+
+    Raises
+    ------
+    SceneError : damaged, ambiguous, incomplete or impossible; the message says what to do
+    """
+    opened = open_source(source, time=time, select=select, chunks=chunks)
+    found = _recognise(opened, mapping)
+    require(found, opened.name, "; ".join(str(f) for f in opened.fields))
+    with refusing_damage(opened.name):
+        assembled = _assemble(opened, found)
+    return _make_scene(opened, found, assembled, chunks, relative_humidity_over)
+
+
+def _make_scene(opened, found, assembled, chunks=None, relative_humidity_over=None):
+    raw, pressure, grid, notes = assembled
+    if chunks is None and raw.nbytes > _EAGER_BYTES:
+        raw = raw.chunk({d: "auto" for d in grid.dims} | {"level": -1})
+    over = _saturation(opened, found, relative_humidity_over)
+    plan = make_plan(found, relative_humidity_over=over, day_of_year=_day_of_year(opened.time))
+    tally = Tally()
+    if raw.chunks or (pressure.ndim > 1 and pressure.chunks):
+        scene = _lazy_columns(raw, pressure, grid, plan)
+    else:
+        scene = _eager_columns(raw, pressure, grid, plan, opened.name, tally)
+    if found.fields.keys() & {"relative_humidity", "relative_humidity_2m"}:
+        found.log.append(f"relative humidity taken as relative to saturation over {over.replace('_', ' ')}")
+    _finish(scene, opened, found, plan, grid, notes, tally)
+    return scene
+
+
+def _recognise(opened, mapping):
+    found = recognise(opened.fields, _read_mapping(mapping))
+    found.log[:0] = opened.log
+    return found
+
+
+def _read_mapping(mapping):
+    if mapping is None or isinstance(mapping, dict):
+        return mapping
+    try:
+        table = tomllib.loads(Path(mapping).read_text(encoding="utf-8"))
+    except (OSError, tomllib.TOMLDecodeError, UnicodeDecodeError) as error:
+        raise SceneError(
+            f"mapping file {mapping}: cannot be read ({error}); it is TOML with a table [variables]"
+        ) from error
+    if not isinstance(table.get("variables"), dict):
+        raise SceneError(f'mapping file {mapping}: no table [variables], in which lines like temperature = "T" stand')
+    return table["variables"]
+
+
+def _saturation(opened, found, wanted):
+    if wanted is not None:
+        if wanted not in SATURATION:
+            raise SceneError(f"relative_humidity_over: '{wanted}' is not one of {', '.join(SATURATION)}")
+        return wanted
+    centre = _temperature_field(found).evidence.get("centre")
+    if opened.dataset is not None:
+        centre = opened.dataset.attrs.get("GRIB_centre")
+    # ECMWF documents its relative humidity (parameter 157) as over water, ice or both by temperature
+    return "mixed" if centre == "ecmf" else "water"
+
+
+def _temperature_field(found):
+    return found.fields.get("temperature") or found.fields["potential_temperature"]
+
+
+def _day_of_year(time):
+    if time is None:
+        return None
+    return float((time - time.astype("datetime64[Y]")) / np.timedelta64(1, "D")) + 1.0
+
+
+def _assemble(opened, found):
+    """All recognised fields on common dimensions, in the units of their quantities; nothing is read yet."""
+    temperature = _temperature_field(found)
+    grid = find_grid(temperature.data, opened.dataset)
+    found.log += grid.log
+    notes = []
+    pressure = level_pressure(temperature, found, found.log)
+    dim = temperature.level_dim
+    pressure_levels = pressure if pressure.ndim == 1 else None
+    variables = {}
+    for name, f in found.fields.items():
+        if name == "pressure":
+            continue
+        data = f.data
+        on_level = QUANTITIES[name].place == "levels"
+        if on_level:
+            data = on_levels(name, f, dim, pressure_levels, notes)
+        if data is None or not _fits(data, f, temperature, grid, dim, notes):
+            continue
+        variables[name] = _canonical_dims(data, dim if on_level else None, grid)
+    _drop_lost(found, variables)
+    raw = xr.Dataset(variables)
+    pressure = _canonical_dims(pressure, dim, grid if pressure.ndim > 1 else None)
+    if runs_upward(pressure, "level"):
+        raw, pressure = raw.isel(level=slice(None, None, -1)), pressure.isel(level=slice(None, None, -1))
+    top = pressure.isel(level=0, **{d: pressure.sizes[d] // 2 for d in pressure.dims if d != "level"})
+    notes.append(f"above the top level ({float(top) / 100:g} hPa): the reference atmosphere")
+    return raw, pressure, grid, notes
+
+
+def _fits(data, f, temperature, grid, level_dim, notes):
+    """True when a field lies on the columns of the temperature; else a note says why it is left out."""
+    own = {d: data.sizes[d] for d in data.dims if d != level_dim}
+    wanted = {d: n for d, n in temperature.data.sizes.items() if d != level_dim}
+    if own == wanted:
+        return True
+    notes.append(f"{f.name}: on another grid {own} than the temperature {wanted}; not used")
+    return False
+
+
+def _drop_lost(found, variables):
+    """Forgets fields that could not be brought onto the columns; humidity must not be among them."""
+    lost = [name for name in found.fields if name not in variables and name != "pressure"]
+    for name in lost:
+        del found.fields[name]
+    if not set(found.fields) & set(HUMIDITY_ROUTES):
+        raise SceneError(f"humidity: {', '.join(lost)} does not lie on the levels and grid of the temperature")
+
+
+def _canonical_dims(data, level_dim, grid):
+    data = data.drop_vars(list(data.coords))
+    if level_dim is not None:
+        data = data.rename({level_dim: "level"}) if level_dim != "level" else data
+    if grid is None:
+        return data
+    data = data.rename({d: short for d, short in grid.renamed.items() if d in data.dims})
+    if "cell" in grid.dims and "cell" not in data.dims:
+        data = data.expand_dims("cell", axis=-1)
+    leading = ("level",) if level_dim is not None else ()
+    return data.transpose(*leading, *grid.dims)
+
+
+def _eager_columns(raw, pressure, grid, plan, name, tally):
+    with refusing_damage(name):
+        values = {n: raw[n].values for n in raw.data_vars}
+        level_pressure_values = np.asarray(pressure.values, dtype=float)
+    columns = canonical_columns(values, level_pressure_values, grid.latitude.values, grid.longitude.values, plan, tally)
+    return _as_dataset(columns, level_pressure_values, grid.dims, plan)
+
+
+def _as_dataset(columns, pressure, dims, plan):
+    pressure_dims = ("level",) if pressure.ndim == 1 else ("level", *dims)
+    variables = {"pressure": (pressure_dims, pressure)}
+    for name, values in columns.items():
+        on_level = plan.outputs.get(name) == "level"
+        variables[name] = (("level", *dims) if on_level else dims, values)
+    return xr.Dataset(variables)
+
+
+def _lazy_columns(raw, pressure, grid, plan):
+    """The same, chunk by chunk when the values are asked for."""
+    block = raw.chunk({"level": -1})
+    block["__pressure"] = pressure
+    block = block.assign(__latitude=grid.latitude, __longitude=grid.longitude)
+    block = block.chunk({d: block.chunksizes.get(d, -1) for d in grid.dims} | {"level": -1}).unify_chunks()
+
+    def work(part):
+        values = {n: part[n].values for n in raw.data_vars}
+        part_pressure = np.asarray(part["__pressure"].values, dtype=float)
+        columns = canonical_columns(values, part_pressure, part["__latitude"].values, part["__longitude"].values, plan)
+        return _as_dataset(columns, part_pressure, grid.dims, plan)
+
+    return xr.map_blocks(work, block, template=_template(block, grid, plan))
+
+
+def _template(block, grid, plan):
+    temperature = "temperature" if "temperature" in block else "potential_temperature"
+    precision = block[temperature].dtype if block[temperature].dtype.kind == "f" else np.float64
+    surface = xr.zeros_like(block["__latitude"], dtype=precision)
+    level = surface.expand_dims(level=block.sizes["level"]).chunk({"level": -1})
+    variables = {"pressure": block["__pressure"].astype(float)}
+    for name, kind in plan.outputs.items():
+        variables[name] = level if kind == "level" else surface
+    variables["column_valid"] = surface.astype(bool)
+    return xr.Dataset(variables)
+
+
+def _finish(scene, opened, found, plan, grid, notes, tally):
+    """Coordinates, attributes, and the record of what was recognised, assumed and adjusted."""
+    for name in scene.data_vars:
+        if name in VARIABLES:
+            variable = VARIABLES[name]
+            scene[name].attrs = {"units": variable.units}
+            if variable.standard_name:
+                scene[name].attrs["standard_name"] = variable.standard_name
+            if grid.crs is not None and set(grid.dims) <= set(scene[name].dims):
+                scene[name].attrs["grid_mapping"] = "grid_mapping"
+    scene["column_valid"].attrs = {"long_name": "True where nothing that is needed is missing"}
+    scene["pressure"].attrs["positive"] = "down"
+    _add_coordinates(scene, opened, grid)
+    scene.attrs = {
+        "source": opened.name,
+        "source_kind": opened.kind,
+        "recognised": list(found.log),
+        "defaulted": "\n".join(_defaulted(found, plan, opened) + notes),
+        "adjusted": "\n".join(tally.lines()),
+        "software": f"chansim {__version__}",
+    }
+    if not scene["column_valid"].chunks:
+        scene.attrs["masked_columns"] = int((~scene["column_valid"]).sum())
+
+
+def _add_coordinates(scene, opened, grid):
+    for name, values in (("latitude", grid.latitude), ("longitude", grid.longitude)):
+        variable = VARIABLES[name]
+        attrs = {"units": variable.units, "standard_name": variable.standard_name}
+        scene.coords[name] = (values.dims, values.values, attrs)
+    for dim, axis in grid.axes.items():
+        scene.coords[dim] = axis
+    if grid.crs is not None:
+        scene["grid_mapping"] = grid_mapping_variable(grid.crs)
+    time = np.datetime64("NaT", "ns") if opened.time is None else opened.time.astype("datetime64[ns]")
+    scene.coords["time"] = ((), time, {"standard_name": "time", "long_name": "valid time"})
+
+
+def _defaulted(found, plan, opened):
+    """Lines on every variable that is absent and has a default."""
+    lines = []
+    for variable in VARIABLES.values():
+        if not variable.default or variable.name in plan.routes or variable.kind not in ("level", "surface"):
+            continue
+        lines.append(f"{variable.name}: {_default_in_words(variable, found, plan)}")
+    if plan.routes.get("skin_temperature") == "sea_surface_temperature":
+        lines.append("skin_temperature over land: " + VARIABLES["skin_temperature"].default)
+    if opened.time is None:
+        lines.append("time: not given by the source; the reference atmosphere is the mean of the year")
+    return lines
+
+
+def _default_in_words(variable, found, plan):
+    if variable.name == "skin_temperature":
+        return "2 m temperature" if "air_temperature_2m" in plan.routes else "temperature of the lowest level"
+    if variable.name == "surface_pressure" and {"height", "orography"} <= set(plan.routes):
+        return "from the heights of the levels and of the ground, or the pressure of the lowest level"
+    return variable.default
+
+
+def describe_scene(source, *, time=None, mapping=None, select=None):
+    """What a source has, what was recognised as what, what is missing and what would be assumed.
+
+    Parameters
+    ----------
+    source, time, mapping, select : as for `open_scene`; without `time` the first one is described
+
+    Returns
+    -------
+    str, lines to print. A source that cannot be used is described too, with what would mend it.
+
+    Raises
+    ------
+    SceneError : the source cannot be opened at all
+    """
+    try:
+        opened = open_source(source, time=time, select=select)
+    except SceneError as error:
+        first = _first_time(error)
+        if time is not None or first is None:
+            raise
+        opened = open_source(source, time=first, select=select)
+    lines = [f"{opened.name} ({opened.kind})", _times_in_words(opened)]
+    problems, found, scene, notes = [], None, None, []
+    try:
+        found = _recognise(opened, mapping)
+        require(found, opened.name, "the fields listed here")
+        with refusing_damage(opened.name):
+            assembled = raw, pressure, grid, notes = _assemble(opened, found)
+        lines.append(_grid_in_words(pressure, grid))
+        if raw.nbytes <= _EAGER_BYTES:  # a larger one is not read just to be described
+            scene = _make_scene(opened, found, assembled)
+    except SceneError as error:
+        problems.append(str(error))
+    if found is None:
+        lines += ["", "Fields:", *(f"  {f}" for f in opened.fields)]
+    else:
+        lines += _found_in_words(opened, found, notes)
+    if scene is not None:
+        adjusted = scene.attrs["adjusted"].splitlines()
+        lines += ["", f"Columns masked for missing values: {scene.attrs['masked_columns']}", *adjusted]
+    lines += ["", "Problems:" if problems else "This source can be used.", *(f"  {p}" for p in problems)]
+    return "\n".join(lines)
+
+
+def _first_time(error):
+    text = str(error)
+    return text.rsplit('time="', 1)[1].split('"')[0] if 'time="' in text else None
+
+
+def _times_in_words(opened):
+    if not opened.times:
+        return 'Valid time: not given; pass time="..." if it is known'
+    if len(opened.times) == 1:
+        return f"Valid time: {opened.times[0]}"
+    return f"Valid times: {len(opened.times)}, {opened.times[0]} to {opened.times[-1]}; shown here: {opened.time}"
+
+
+def _grid_in_words(pressure, grid):
+    size = " x ".join(str(n) for n in grid.latitude.shape)
+    mapping = grid.crs.to_cf().get("grid_mapping_name", grid.crs.name) if grid.crs else "no grid mapping"
+    profile = pressure if pressure.ndim == 1 else pressure.mean([d for d in pressure.dims if d != "level"])
+    lat, lon = grid.latitude.values, grid.longitude.values
+    return (
+        f"Columns: {size} ({mapping}), latitude {lat.min():.2f} to {lat.max():.2f}, longitude {lon.min():.2f} to "
+        f"{lon.max():.2f}; {pressure.sizes['level']} levels, {float(profile[0]) / 100:g} to "
+        f"{float(profile[-1]) / 100:g} hPa"
+    )
+
+
+def _found_in_words(opened, found, notes):
+    lines = ["", "Recognised:", *(f"  {line}" for line in found.log)]
+    if found.unused:
+        lines += ["", "Not used:", *(f"  {f}" for f in found.unused)]
+    assumed = _defaulted(found, make_plan(found), opened) + notes
+    lines += ["", "Missing, and what is assumed instead:", *(f"  {line}" for line in assumed)]
+    lines += ["", "To supply one of these, add it to the source with its standard name, or name it:"]
+    lines += ['  open_scene(source, mapping={"skin_temperature": "NAME"})']
+    return [
+        *lines,
+        *textwrap.wrap(f"quantities: {', '.join(QUANTITIES)}", 100, initial_indent="  ", subsequent_indent="  "),
+    ]

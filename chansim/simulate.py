@@ -1,0 +1,349 @@
+"""Scene x imager x view -> Dataset of brightness temperatures: the only place that joins them."""
+
+import datetime
+from dataclasses import dataclass, field
+
+import numba
+import numpy as np
+import xarray as xr
+
+from chansim._version import __version__
+from chansim.channels.absorption_tables import PRESSURES, TEMPERATURES, absorption_tables
+from chansim.channels.atlas import load_atlas
+from chansim.channels.imager import load_imager
+from chansim.errors import SceneError
+from chansim.optics.condensate import SPECIES, condensate_optics, effective_radii
+from chansim.optics.surface import channel_emissivity
+from chansim.scene.reading import open_scene
+from chansim.scene.reference_atmosphere import GASES as REFERENCE_GASES
+from chansim.scene.reference_atmosphere import reference_profile, reference_table
+from chansim.transfer.overlap import OVERLAPS
+from chansim.transfer.solve import RESULTS, solve_columns
+from chansim.view.lines_of_sight import as_view
+
+CAUTION = (
+    "A simulation from model output, not an observation. Official warnings and the judgement of licensed "
+    "forecasters come first."
+)
+# scene variable, short name in the absorption tables, name in the reference atmosphere
+_TRACE_GASES = {
+    "carbon_dioxide_mole_fraction": "co2",
+    "nitrous_oxide_mole_fraction": "n2o",
+    "methane_mole_fraction": "ch4",
+    "carbon_monoxide_mole_fraction": "co",
+}
+_GAS_NAMES = {gas: name for name, gas in _TRACE_GASES.items()} | {"o3": "ozone_mole_fraction"}
+_COLUMNS_AT_ONCE = 16384
+
+
+@dataclass(frozen=True)
+class Settings:
+    """What a simulation assumes; recorded in its output.
+
+    overlap : a key of `chansim.transfer.overlap.OVERLAPS`
+    subcolumns : for columns with partial cloud
+    decorrelation_length : of the exponential-random overlap [m]
+    liquid_radius, ice_radius : parametrisations of the effective radius, by name
+    ice_habit : ice crystal model, by name
+    gases : {gas: mole fraction at the surface} that replace the defaults of co2, n2o, ch4, co
+    """
+
+    overlap: str = "maximum-random"
+    subcolumns: int = 20
+    decorrelation_length: float = 2000.0
+    liquid_radius: str = "martin-1994"
+    ice_radius: str = "sun-2001"
+    ice_habit: str = "default"
+    gases: dict = field(default_factory=dict)
+
+
+def simulate(scene, imager="tarn", *, channels=None, view="nadir", settings=None, emissivity=None, progress=None):
+    """Simulate the picture an imager would have taken.
+
+    Parameters
+    ----------
+    scene : canonical Dataset from `chansim.open_scene`, or what that function reads (path, Dataset)
+    imager : what `chansim.load_imager` takes: id of a built-in imager, folder, response file(s), Imager
+    channels : channel ids, in order; None = all
+    view : "nadir", a zenith angle [degrees], ("geostationary", longitude [degrees_east]), or a Dataset with
+        `view_zenith_angle` [degrees] on the horizontal grid of the scene
+    settings : Settings; None = the defaults
+    emissivity : surface emissivity (channel,) or (channel, horizontal) that replaces the built-in one [1]
+    progress : function (done, all columns) called between pieces of work
+
+    Returns
+    -------
+    xarray.Dataset with dimensions (channel, horizontal dimensions of the scene):
+    brightness_temperature, brightness_temperature_clear [K], radiance [mW m-2 sr-1 (cm-1)-1],
+    surface_transmittance [1], cloud_optical_thickness [1], weighting_function_peak [Pa]; what was
+    assumed is in its attributes
+
+    Raises
+    ------
+    SceneError, ResponseError, ViewError : see there
+    """
+    settings = settings or Settings()
+    if not (isinstance(scene, xr.Dataset) and "column_valid" in scene):
+        scene = open_scene(scene)
+    if settings.overlap not in OVERLAPS:
+        raise SceneError(f"unknown cloud overlap {settings.overlap!r}; use one of {', '.join(OVERLAPS)}")
+    imager = load_imager(imager, channels)
+    dims, shape = _horizontal(scene)
+    view = as_view(view)
+    given = tuple(["o3"] + [gas for name, gas in _TRACE_GASES.items() if name in scene])
+    atlas = load_atlas()
+    tables = absorption_tables(
+        imager.channels, _well_mixed(settings.gases, given), given, atlas.pressure, atlas.temperature
+    )
+    optics = condensate_optics(tables.wavenumber, settings.ice_habit)
+    out = {name: np.empty((len(imager.channels), *shape), dtype=np.float32) for name in RESULTS}
+    zenith = np.empty(shape, dtype=np.float32)
+    counts = {}
+    rows = max(1, _COLUMNS_AT_ONCE // max(1, int(np.prod(shape[1:]))))
+    for start in range(0, shape[0], rows):
+        piece = slice(start, min(start + rows, shape[0]))
+        slab = scene.isel({dims[0]: piece}).load()
+        results, angles = _solve_slab(slab, imager, view, settings, emissivity, tables, optics, dims, counts, piece)
+        for name, values in zip(RESULTS, results):
+            out[name][:, piece] = values
+        zenith[piece] = angles
+        if progress is not None:
+            progress(piece.stop * int(np.prod(shape[1:])), int(np.prod(shape)))
+    return _as_dataset(scene, imager, view, settings, out, zenith, dims, counts, atlas)
+
+
+def _horizontal(scene):
+    dims = scene["column_valid"].dims
+    if not dims:
+        raise SceneError("the scene has no horizontal dimension; a single column needs one of length 1")
+    return dims, tuple(scene.sizes[d] for d in dims)
+
+
+def _well_mixed(requested, given):
+    """Profiles (functions of pressure) of the gases that have no field."""
+    table = reference_table()
+    profiles = {}
+    unknown = set(requested) - set(_TRACE_GASES.values())
+    if unknown:
+        raise SceneError(f"cannot set the mole fraction of {', '.join(sorted(unknown))}; "
+                         f"settable: {', '.join(_TRACE_GASES.values())}")
+    for name, gas in _TRACE_GASES.items():
+        if gas in given:
+            continue
+        mean = table[name].mean(axis=0)
+        if gas in requested:
+            mean = mean * (float(requested[gas]) / mean[-1])
+        profiles[gas] = lambda p, mean=mean: np.interp(np.log(p), np.log(table["pressure"]), mean)
+    return profiles
+
+
+def _columns(slab, name, dims, count, default):
+    """A surface field as (columns,), or the default."""
+    if name not in slab:
+        return np.full(count, default, dtype=float)
+    return np.ascontiguousarray(slab[name].transpose(*dims).values.reshape(count), dtype=float)
+
+
+def _profiles(slab, name, dims, count):
+    """A level field as (columns, levels), None when absent."""
+    if name not in slab:
+        return None
+    field_ = slab[name]
+    if field_.ndim == 1:
+        return np.ascontiguousarray(field_.values[None, :], dtype=float)
+    vertical = [d for d in field_.dims if d not in dims][0]
+    return np.ascontiguousarray(field_.transpose(*dims, vertical).values.reshape(count, -1), dtype=float)
+
+
+def _half_pressure(slab, dims, count, pressure):
+    half = _profiles(slab, "half_pressure", dims, count)
+    if half is not None:
+        return half
+    middle = np.sqrt(pressure[:, :-1] * pressure[:, 1:])
+    return np.concatenate([pressure[:, :1] ** 2 / middle[:, :1], middle, pressure[:, -1:] ** 2 / middle[:, -1:]], axis=1)
+
+
+def _day_of_year(slab):
+    if "time" not in slab.coords:
+        return None
+    time = np.asarray(slab["time"].values).ravel()
+    if time.size != 1 or np.isnat(time[0]):
+        return None
+    day = time[0].astype("datetime64[D]")
+    return int((day - day.astype("datetime64[Y]").astype("datetime64[D]")).astype(int)) + 1
+
+
+def _reference(slab, dims, count, given):
+    latitude = _columns(slab, "latitude", dims, count, 45.0)
+    # the reference changes slowly: half a degree is far below what is known of it
+    rounded, where = np.unique(np.round(np.nan_to_num(latitude) * 2.0) / 2.0, return_inverse=True)
+    profile = reference_profile(rounded, _day_of_year(slab))
+    names = [REFERENCE_GASES[0]] + [_GAS_NAMES[gas] for gas in given]
+    gases = np.stack([profile[name][where] for name in names])
+    return profile["pressure"], np.ascontiguousarray(profile["temperature"][where]), gases
+
+
+def _clouds(slab, settings, dims, count, levels, pressure, temperature, counts):
+    """Mixing ratios, ln effective radii (species, columns, levels) and cloud fraction (columns, levels)."""
+    mixing = np.zeros((len(SPECIES), count, levels))
+    for s, name in enumerate(SPECIES):
+        values = _profiles(slab, name, dims, count)
+        if values is not None:
+            mixing[s] = np.nan_to_num(values, nan=0.0)
+    fraction = _profiles(slab, "cloud_fraction", dims, count)
+    fraction = np.ones((count, levels)) if fraction is None else np.nan_to_num(fraction, nan=0.0)
+    counts["condensate without cloud fraction"] = counts.get("condensate without cloud fraction", 0) + int(
+        ((mixing.sum(axis=0) > 1e-8) & (fraction <= 0.0)).sum()
+    )
+    fields = {name: _profiles(slab, name, dims, count) for name in
+              ("effective_radius_liquid", "effective_radius_ice", "number_liquid", "number_ice")}
+    land = _columns(slab, "land_fraction", dims, count, 0.0)
+    latitude = _columns(slab, "latitude", dims, count, 45.0)
+    radius = effective_radii(mixing, fraction, pressure, temperature, land, latitude, fields, settings.liquid_radius,
+                             settings.ice_radius, counts)
+    return mixing, np.log(radius), np.clip(fraction, 0.0, 1.0)
+
+
+def _solve_slab(slab, imager, view, settings, emissivity, tables, optics, dims, counts, piece):
+    shape = tuple(slab.sizes[d] for d in dims)
+    count = int(np.prod(shape))
+    pressure = _profiles(slab, "pressure", dims, count)
+    temperature = _profiles(slab, "temperature", dims, count)
+    levels = temperature.shape[1]
+    gases = np.full((len(tables.gases), count, levels), np.nan)
+    for g, gas in enumerate(tables.gases):
+        values = _profiles(slab, _GAS_NAMES[gas], dims, count)
+        if values is not None:
+            gases[g] = values
+    zenith = np.broadcast_to(view.zenith(slab), shape).reshape(count)
+    valid = slab["column_valid"].transpose(*dims).values.reshape(count) & (zenith < view.largest_zenith)
+    surface_pressure = _columns(slab, "surface_pressure", dims, count, np.nan)
+    surface = (surface_pressure, _columns(slab, "air_temperature_2m", dims, count, np.nan),
+               _columns(slab, "specific_humidity_2m", dims, count, np.nan),
+               _columns(slab, "skin_temperature", dims, count, np.nan), _columns(slab, "orography", dims, count, 0.0))
+    surface_emissivity = _emissivity(slab, imager, zenith, emissivity, dims, count, piece)
+    results = np.full((len(RESULTS), len(imager.channels), count), np.nan)
+    grid = (np.log(PRESSURES[0]), np.log(PRESSURES[1] / PRESSURES[0]), TEMPERATURES[0], TEMPERATURES[1] - TEMPERATURES[0])
+    solve_columns(
+        np.ascontiguousarray(valid), (pressure, temperature, _profiles(slab, "specific_humidity", dims, count), gases,
+                _half_pressure(slab, dims, count, pressure)),
+        surface, _reference(slab, dims, count, tables.gases),
+        _clouds(slab, settings, dims, count, levels, pressure, temperature, counts), optics,
+        np.cos(np.radians(np.where(valid, zenith, 0.0))), surface_emissivity,
+        (tables.table, grid, tables.wavenumber, tables.weight, tables.first),
+        (OVERLAPS[settings.overlap], float(settings.decorrelation_length), int(settings.subcolumns)), results)
+    return results.reshape(len(RESULTS), len(imager.channels), *shape), zenith.reshape(shape)
+
+
+def _emissivity(slab, imager, zenith, given, dims, count, piece):
+    """Surface emissivity (channels, columns): what the user gives, what the scene carries, or the built-in one."""
+    channels = imager.channels
+    if given is None:
+        classes = None
+        if "surface_class" in slab:
+            classes = slab["surface_class"].transpose(*dims).values.reshape(count).astype(np.int64)
+        return channel_emissivity(classes, _columns(slab, "land_fraction", dims, count, 0.0), np.clip(zenith, 0.0, 85.0),
+                                  _columns(slab, "wind_speed_10m", dims, count, 7.0),
+                                  [c.node_wavenumber for c in channels], [c.node_weight for c in channels])
+    values = np.asarray(given, dtype=float)
+    if values.shape[:1] != (len(channels),):
+        raise SceneError(f"emissivity: {values.shape} given; the first dimension must be the {len(channels)} channel(s)")
+    if values.ndim > 1:
+        values = values[:, piece]
+    values = np.broadcast_to(values.reshape(len(channels), -1), (len(channels), count))
+    if not ((values >= 0.0) & (values <= 1.0)).all():
+        raise SceneError(f"emissivity must lie within 0 and 1; given {values.min():g} to {values.max():g}")
+    return np.ascontiguousarray(values)
+
+
+_LONG_NAMES = {
+    "radiance": ("simulated radiance", "mW m-2 sr-1 (cm-1)-1", "toa_outgoing_radiance_per_unit_wavenumber"),
+    "brightness_temperature": ("simulated brightness temperature", "K", "toa_brightness_temperature"),
+    "brightness_temperature_clear": ("the same without condensate", "K",
+                                     "toa_brightness_temperature_assuming_clear_sky"),
+    "surface_transmittance": ("transmittance from the surface to the top, condensate included", "1", None),
+    "cloud_optical_thickness": ("extinction optical thickness of all condensate, grid mean", "1", None),
+    "weighting_function_peak": ("pressure where transmittance changes most with ln p", "Pa", None),
+}
+
+
+def _as_dataset(scene, imager, view, settings, out, zenith, dims, counts, atlas):
+    channels = imager.channels
+    fields = {"radiance": out["radiance"], "surface_transmittance": out["transmittance"],
+              "cloud_optical_thickness": out["cloud_optical_thickness"],
+              "weighting_function_peak": out["peak_pressure"]}
+    for name, source in (("brightness_temperature", "radiance"), ("brightness_temperature_clear", "radiance_clear")):
+        fields[name] = np.stack([c.brightness_temperature(out[source][i]) for i, c in enumerate(channels)])
+    mapping = "grid_mapping" if "grid_mapping" in scene else None
+    data = {}
+    for name, values in fields.items():
+        long_name, units, standard_name = _LONG_NAMES[name]
+        attributes = {"long_name": long_name, "units": units}
+        if standard_name:
+            attributes["standard_name"] = standard_name
+        if mapping:
+            attributes["grid_mapping"] = mapping
+        data[name] = (("channel", *dims), values.astype(np.float32), attributes)
+    data["view_zenith_angle"] = (dims, zenith, {"long_name": "zenith angle of the imager", "units": "degree",
+                                                "standard_name": "sensor_zenith_angle"})
+    for name in ("land_fraction", "grid_mapping"):
+        if name in scene:
+            data[name] = scene[name]
+    result = xr.Dataset(data, coords=_coordinates(scene, channels, dims))
+    result.attrs = _record(scene, imager, view, settings, counts, atlas)
+    return result
+
+
+def _coordinates(scene, channels, dims):
+    def along(values, **attributes):
+        return ("channel", np.asarray(values), attributes)
+
+    coordinates = {
+        "channel": [c.id for c in channels],
+        "channel_name": along([c.name for c in channels]),
+        "channel_kind": along([c.kind for c in channels]),
+        "central_wavenumber": along([c.central_wavenumber for c in channels], units="cm-1",
+                                    standard_name="sensor_band_central_radiation_wavenumber"),
+        "bandwidth": along([c.bandwidth for c in channels], units="cm-1"),
+        "band_offset": along([c.band_offset for c in channels], units="K"),
+        "band_slope": along([c.band_slope for c in channels], units="1"),
+        "node_count": along([c.node_wavenumber.size for c in channels]),
+        "node_fit_error": along([c.fit_error for c in channels], units="K"),
+    }
+    for name in ("latitude", "longitude", "time", *dims):
+        if name in scene.coords:
+            coordinates[name] = scene.coords[name]
+    return coordinates
+
+
+def _record(scene, imager, view, settings, counts, atlas):
+    """Global attributes: everything that is needed to make the output again."""
+    attributes = {
+        "Conventions": "CF-1.11, ACDD-1.3",
+        "title": f"Simulated brightness temperature, {imager.name}",
+        "summary": CAUTION,
+        "imager": imager.id,
+        "view": view.describe(),
+        "model": str(scene.attrs.get("model", scene.attrs.get("source_model", ""))) or "model not named",
+        "source_file": str(scene.attrs.get("source", "")),
+        "software": f"chansim {__version__}",
+        "atlas_sha256": atlas.digest,
+        "co2_wings": str(atlas.attributes.get("co2_wings", "")),
+        "date_created": datetime.datetime.now(datetime.timezone.utc).strftime("%Y-%m-%dT%H:%M:%SZ"),
+        "cloud_overlap": settings.overlap,
+        "subcolumns": settings.subcolumns,
+        "decorrelation_length_m": settings.decorrelation_length,
+        "effective_radius_liquid": settings.liquid_radius,
+        "effective_radius_ice": settings.ice_radius,
+        "ice_habit": settings.ice_habit,
+        "changed_gases": ", ".join(f"{gas}={value:g}" for gas, value in settings.gases.items()) or "none",
+        "defaulted": str(scene.attrs.get("defaulted", "")),
+        "adjusted": str(scene.attrs.get("adjusted", "")),
+        "counted": "\n".join(f"{name}: {number}" for name, number in sorted(counts.items()) if number) or "nothing",
+        "masked_columns": int(np.sum(~scene["column_valid"].values)),
+    }
+    recognised = scene.attrs.get("recognised", "")
+    attributes["recognised"] = recognised if isinstance(recognised, str) else "\n".join(recognised)
+    if "coastline" in scene.attrs:
+        attributes["coastline"] = scene.attrs["coastline"]
+    return attributes

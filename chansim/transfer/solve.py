@@ -1,0 +1,529 @@
+"""All columns, all channels: the compiled driver of the column solvers.
+
+Plain arrays only. Each column is built once (columns.py); for each channel its
+nodes are solved clear and, where there is condensate, cloudy, subcolumn by
+subcolumn. Columns are independent: results do not depend on the number of
+threads.
+"""
+
+import concurrent.futures
+import math
+import os
+
+import numpy as np
+from numba import njit
+
+from chansim.constants import EARTH_RADIUS, STANDARD_GRAVITY
+from chansim.planck import planck_scalar
+from chansim.transfer.absorbing import (
+    absorbed_fraction,
+    absorbing_radiance,
+    bend_weight,
+    density_slope,
+    far_weight,
+    middle_factor,
+    source_bend,
+)
+from chansim.transfer.columns import build_levels, hydrostatic_heights, layer_amounts, layer_secants
+from chansim.transfer.overlap import fill_subcolumn
+
+
+@njit(cache=True)
+def table_position(log_first, log_step, size, t_first, t_step, t_size, pressure, temperature):
+    """Where (pressure, temperature) lies in the table: (ip, it, weight in p, three weights in T).
+
+    Linear in p between the grid pressures (wings are proportional to p), quadratic in T.
+    """
+    x = (math.log(pressure) - log_first) / log_step
+    ip = min(max(int(x), 0), size - 2)
+    p1 = math.exp(log_first + ip * log_step)
+    p2 = math.exp(log_first + (ip + 1) * log_step)
+    wp = min(max((pressure - p1) / (p2 - p1), 0.0), 1.0)
+    y = min(max((temperature - t_first) / t_step, 0.0), t_size - 1.0)
+    it = min(max(int(y + 0.5), 1), t_size - 2)
+    d = y - it
+    return ip, it - 1, wp, 0.5 * d * (d - 1.0), 1.0 - d * d, 0.5 * d * (d + 1.0)
+
+
+@njit(cache=True, fastmath=True)
+def _add_slot(table, slot, position, amount, first, last, tau):
+    """tau[i] += amount x cross-section at the position, for the nodes first..last of one slot."""
+    ip, it, wp, w0, w1, w2 = position
+    a = amount * (1.0 - wp)
+    b = amount * wp
+    c0, c1, c2 = a * w0, a * w1, a * w2
+    d0, d1, d2 = b * w0, b * w1, b * w2
+    for i in range(first, last):
+        tau[i - first] += (
+            c0 * table[ip, it, slot, i]
+            + c1 * table[ip, it + 1, slot, i]
+            + c2 * table[ip, it + 2, slot, i]
+            + d0 * table[ip + 1, it, slot, i]
+            + d1 * table[ip + 1, it + 1, slot, i]
+            + d2 * table[ip + 1, it + 2, slot, i]
+        )
+
+
+@njit(cache=True)
+def gas_optical_depth(layers, amount, effective_p, effective_t, grid, table, first, last, tau):
+    """Vertical optical depths of the gases: tau (layers, nodes of the channel)."""
+    log_first, log_step, t_first, t_step = grid
+    slots = amount.shape[0]
+    for j in range(layers):
+        air = table_position(
+            log_first, log_step, table.shape[0], t_first, t_step, table.shape[1], effective_p[0, j], effective_t[0, j]
+        )
+        water = table_position(
+            log_first, log_step, table.shape[0], t_first, t_step, table.shape[1], effective_p[1, j], effective_t[1, j]
+        )
+        tau[j, : last - first] = 0.0
+        for s in range(slots):
+            if amount[s, j] != 0.0:
+                _add_slot(table, s, water if s == 1 or s == 2 else air, amount[s, j], first, last, tau[j])
+        for i in range(last - first):
+            tau[j, i] = max(tau[j, i], 0.0)
+
+
+@njit(cache=True)
+def level_planck(levels, temperature, wavenumber, first, last, planck_level):
+    """Planck function at the levels: (levels, nodes of the channel)."""
+    for j in range(levels):
+        for i in range(first, last):
+            planck_level[j, i - first] = planck_scalar(wavenumber[i], temperature[j])
+
+
+@njit(cache=True)
+def source_bends(layers, level_p, level_t, tau, planck_level, wavenumber, first, last, bend):
+    """Bend of the source of each layer from the gases (see absorbing.py): bend (layers, nodes of the channel)."""
+    for j in range(layers):
+        up, down = max(j - 1, 0), min(j + 1, layers - 1)
+        thickness = math.log(level_p[j + 1] / level_p[j])
+        thickness_up = math.log(level_p[up + 1] / level_p[up])
+        thickness_down = math.log(level_p[down + 1] / level_p[down])
+        span = (thickness_up if up < j else 0.0) + (thickness_down if down > j else 0.0)
+        span = 0.5 * (span + thickness * ((up < j) + (down > j)))  # between the middles of the layers compared
+        for i in range(last - first):
+            slope = 0.0
+            if span > 0.0:
+                slope = 2.0 * thickness / span * density_slope(
+                    tau[up, i] / thickness_up, tau[j, i] / thickness, tau[down, i] / thickness_down
+                )
+            factor = middle_factor(wavenumber[first + i], level_t[j], level_t[j + 1])
+            bend[j, i] = source_bend(planck_level[j, i], planck_level[j + 1, i], factor, min(max(slope, -2.0), 2.0))
+
+
+@njit(cache=True)
+def clear_channel(
+    layers, tau, secant, planck_level, bend, planck_surface, emissivity, weight, first, last, state, profile
+):
+    """Clear-sky radiance and transmittance of a channel.
+
+    profile : (levels,) result, channel-mean transmittance from each level to the top
+    state : (3, nodes) work
+    """
+    n = last - first
+    for i in range(n):
+        state[0, i], state[1, i], state[2, i] = 0.0, 0.0, 1.0
+    profile[0] = 1.0
+    for j in range(layers):
+        mean = 0.0
+        for i in range(n):
+            path = tau[j, i] * secant[j]
+            absorbed = absorbed_fraction(path)
+            w = far_weight(path, absorbed)
+            bent = bend[j, i] * bend_weight(path, absorbed)
+            above, below = planck_level[j, i], planck_level[j + 1, i]
+            state[0, i] += state[2, i] * (absorbed * (above + (below - above) * w) + bent)
+            state[1, i] = state[1, i] * (1.0 - absorbed) + absorbed * (below + (above - below) * w) + bent
+            state[2, i] *= 1.0 - absorbed
+            mean += weight[first + i] * state[2, i]
+        profile[j + 1] = mean
+    radiance = 0.0
+    for i in range(n):
+        radiance += weight[first + i] * (
+            state[0, i] + state[2, i] * (emissivity * planck_surface[i] + (1.0 - emissivity) * state[1, i])
+        )
+    return radiance
+
+
+@njit(cache=True)
+def particle_index(log_radius, log_first, log_step, size):
+    """Position on a radius axis uniform in ln r, clamped at its ends: (index, weight)."""
+    y = min(max((log_radius - log_first) / log_step, 0.0), size - 1.0)
+    i = min(int(y), size - 2)
+    return i, y - i
+
+
+@njit(cache=True)
+def cloud_layer_optics(path, log_radius, axis, extinction, albedo, asymmetry, first, last, tau, omega, g):
+    """Mixed optical properties of all condensate in one layer, for the nodes of a channel.
+
+    path : (species,) [kg m-2]; log_radius : (species,) ln of the effective radius [m]
+    axis : (species, 3) ln first radius, ln step, size; extinction.. : (species, radii, nodes)
+    tau, omega, g : (nodes,) results: extinction optical thickness, single-scattering albedo, asymmetry
+    """
+    n = last - first
+    for i in range(n):
+        tau[i], omega[i], g[i] = 0.0, 0.0, 0.0
+    for s in range(path.size):
+        if path[s] <= 0.0:
+            continue
+        r, w = particle_index(log_radius[s], axis[s, 0], axis[s, 1], int(axis[s, 2]))
+        for i in range(n):
+            k = first + i
+            e = path[s] * (extinction[s, r, k] * (1.0 - w) + extinction[s, r + 1, k] * w)
+            a = albedo[s, r, k] * (1.0 - w) + albedo[s, r + 1, k] * w
+            tau[i] += e
+            omega[i] += e * a
+            g[i] += e * a * (asymmetry[s, r, k] * (1.0 - w) + asymmetry[s, r + 1, k] * w)
+    for i in range(n):
+        if omega[i] > 0.0:
+            g[i] /= omega[i]
+        if tau[i] > 0.0:
+            omega[i] /= tau[i]
+
+
+@njit(cache=True)
+def peak_of_weighting_function(layers, level_p, profile):
+    """Pressure where -d(transmittance)/d(ln p) is largest [Pa]."""
+    best, where = -1.0, level_p[0]
+    for j in range(layers):
+        value = (profile[j] - profile[j + 1]) / math.log(level_p[j + 1] / level_p[j])
+        if value > best:
+            best, where = value, math.sqrt(level_p[j] * level_p[j + 1])
+    return where
+
+
+# what `solve_columns` returns for each channel and column, in order
+RESULTS = ("radiance", "radiance_clear", "transmittance", "cloud_optical_thickness", "peak_pressure")
+_BLOCK = 512  # columns of one task, which share one set of work arrays
+
+
+@njit(cache=True)
+def _layer_condensate(layers, level_p, level_z, layer_cell, mixing, log_radius, fraction, path, radius):
+    """Condensate path of each layer inside the cloudy part [kg m-2] and ln effective radius: (layers, species)."""
+    for j in range(layers):
+        cell = layer_cell[j]
+        gravity = STANDARD_GRAVITY * (EARTH_RADIUS / (EARTH_RADIUS + 0.5 * (level_z[j] + level_z[j + 1]))) ** 2
+        for s in range(mixing.shape[0]):
+            path[j, s] = 0.0
+            if cell >= 0 and mixing[s, cell] > 0.0 and fraction[cell] > 0.0:
+                path[j, s] = mixing[s, cell] / fraction[cell] * (level_p[j + 1] - level_p[j]) / gravity
+                radius[j, s] = log_radius[s, cell]
+
+
+@njit(cache=True)
+def _absorbing_cloudy(
+    layers, tau, secant, cloud_tau, cloud_omega, planck_level, bend, planck_surface, emissivity, weight, first, last,
+    work, profile
+):  # fmt: skip
+    """Channel radiance with condensate as an absorber. work : (2, layers)"""
+    slant, bent = work[0, :layers], work[1, :layers]
+    radiance = 0.0
+    profile[: layers + 1] = 0.0
+    for i in range(last - first):
+        for j in range(layers):
+            total = tau[j, i] + cloud_tau[j, i] * (1.0 - cloud_omega[j, i])
+            slant[j] = total * secant[j]
+            bent[j] = bend[j, i] * tau[j, i] / total if total > 0.0 else 0.0
+        through = 1.0
+        profile[0] += weight[first + i]
+        for j in range(layers):
+            through *= math.exp(-slant[j])
+            profile[j + 1] += weight[first + i] * through
+        value, _ = absorbing_radiance(slant, planck_level[: layers + 1, i], bent, planck_surface[i], emissivity)
+        radiance += weight[first + i] * value
+    return radiance
+
+
+@njit(cache=True)
+def _subcolumn_masks(cells, fraction, height, overlap, decorrelation_length, count, masks, share):
+    """Different subcolumns of one column and the share of each; returns how many."""
+    different = 0
+    for s in range(count):
+        fill_subcolumn(fraction, height, overlap, decorrelation_length, s, count, masks[different])
+        same = -1
+        for m in range(different):
+            equal = True
+            for k in range(cells):
+                if masks[m, k] != masks[different, k]:
+                    equal = False
+                    break
+            if equal:
+                same = m
+                break
+        if same >= 0:
+            share[same] += 1.0 / count
+        else:
+            share[different] = 1.0 / count
+            different += 1
+    return different
+
+
+@njit(cache=True)
+def _one_column(
+    c, atmosphere, surface, reference, cloud, optics, view_cosine, emissivity, tables, options, work, results
+):
+    """Solve all channels of column c; see `solve_columns`."""
+    pressure, temperature, humidity, gases, half_pressure = atmosphere
+    surface_pressure, air_temperature, air_humidity, skin_temperature, surface_height = surface
+    ref_pressure, ref_temperature, ref_gases = reference
+    mixing, log_radius, fraction = cloud
+    axis, extinction, albedo, asymmetry = optics
+    table, grid, wavenumber, weight, firsts = tables
+    overlap, decorrelation_length, count = options
+    (
+        points,
+        level_p,
+        level_t,
+        level_x,
+        level_z,
+        layer_cell,
+        amount,
+        effective_p,
+        effective_t,
+        secant,
+        tau,
+        planck_level,
+        planck_surface,
+        state,
+        profile,
+        cloudy,
+        path,
+        radius,
+        cloud_tau,
+        cloud_omega,
+        cloud_g,
+        masks,
+        share,
+        slant,
+        cell_height,
+        mean_profile,
+        bend,
+    ) = work
+
+    row = c if pressure.shape[0] > 1 else 0
+    any_cloud = False
+    for k in range(cloudy.size):
+        cloudy[k] = False
+        for s in range(mixing.shape[0]):
+            if mixing[s, c, k] > 0.0 and fraction[c, k] > 0.0 and pressure[row, k] < surface_pressure[c]:
+                cloudy[k] = True
+                any_cloud = True
+    levels = build_levels(
+        pressure[row],
+        temperature[c],
+        humidity[c],
+        gases[:, c],
+        half_pressure[row],
+        cloudy,
+        surface_pressure[c],
+        air_temperature[c],
+        air_humidity[c],
+        ref_pressure,
+        ref_temperature[c],
+        ref_gases[:, c],
+        points,
+        level_p,
+        level_t,
+        level_x,
+        layer_cell,
+    )
+    layers = levels - 1
+    hydrostatic_heights(levels, level_p, level_t, level_x, surface_height[c], level_z)
+    layer_amounts(levels, level_p, level_t, level_x, level_z, amount, effective_p, effective_t)
+    layer_secants(levels, level_z, surface_height[c], view_cosine[c], secant)
+    different = 0
+    if any_cloud:
+        _layer_condensate(
+            layers, level_p, level_z, layer_cell, mixing[:, c], log_radius[:, c], fraction[c], path, radius
+        )
+        for j in range(layers):
+            if layer_cell[j] >= 0:
+                cell_height[layer_cell[j]] = level_z[j]
+        different = _subcolumn_masks(
+            cloudy.size, fraction[c], cell_height, overlap, decorrelation_length, count, masks, share
+        )
+    for channel in range(firsts.size - 1):
+        first, last = firsts[channel], firsts[channel + 1]
+        gas_optical_depth(layers, amount, effective_p, effective_t, grid, table, first, last, tau)
+        level_planck(levels, level_t, wavenumber, first, last, planck_level)
+        source_bends(layers, level_p, level_t, tau, planck_level, wavenumber, first, last, bend)
+        for i in range(first, last):
+            planck_surface[i - first] = planck_scalar(wavenumber[i], skin_temperature[c])
+        clear = clear_channel(
+            layers,
+            tau,
+            secant,
+            planck_level,
+            bend,
+            planck_surface,
+            emissivity[channel, c],
+            weight,
+            first,
+            last,
+            state,
+            profile,
+        )
+        total, thickness = 0.0, 0.0
+        if not any_cloud:
+            total = clear
+            mean_profile[:levels] = profile[:levels]
+        else:
+            mean_profile[:levels] = 0.0
+            for m in range(different):
+                empty = True
+                for j in range(layers):
+                    inside = layer_cell[j] >= 0 and masks[m, layer_cell[j]] and cloudy[layer_cell[j]]
+                    if inside:
+                        cloud_layer_optics(
+                            path[j],
+                            radius[j],
+                            axis,
+                            extinction,
+                            albedo,
+                            asymmetry,
+                            first,
+                            last,
+                            cloud_tau[j],
+                            cloud_omega[j],
+                            cloud_g[j],
+                        )
+                        empty = False
+                        for i in range(last - first):
+                            thickness += share[m] * weight[first + i] * cloud_tau[j, i]
+                    else:
+                        cloud_tau[j, : last - first] = 0.0
+                if empty:
+                    total += share[m] * clear
+                    for j in range(levels):
+                        mean_profile[j] += share[m] * profile[j]
+                else:
+                    value = _absorbing_cloudy(
+                        layers,
+                        tau,
+                        secant,
+                        cloud_tau,
+                        cloud_omega,
+                        planck_level,
+                        bend,
+                        planck_surface,
+                        emissivity[channel, c],
+                        weight,
+                        first,
+                        last,
+                        slant,
+                        state[3],
+                    )
+                    total += share[m] * value
+                    for j in range(levels):
+                        mean_profile[j] += share[m] * state[3, j]
+        results[0, channel, c] = total
+        results[1, channel, c] = clear
+        results[2, channel, c] = mean_profile[levels - 1]
+        results[3, channel, c] = thickness
+        results[4, channel, c] = peak_of_weighting_function(layers, level_p, mean_profile)
+
+
+@njit(cache=True)
+def _work_arrays(model_levels, ref_levels, gases, species, nodes, subcolumns):
+    size = 2 * model_levels + ref_levels + 80
+    span = max(size, nodes)
+    points = (
+        np.empty(model_levels + ref_levels + 2),
+        np.empty(model_levels + ref_levels + 2),
+        np.empty((1 + gases, model_levels + ref_levels + 2)),
+        np.empty(model_levels + ref_levels + 2, dtype=np.int64),
+    )
+    return (
+        points,
+        np.empty(size),
+        np.empty(size),
+        np.empty((1 + gases, size)),
+        np.empty(size),
+        np.empty(size, dtype=np.int64),
+        np.empty((3 + gases, size)),
+        np.empty((2, size)),
+        np.empty((2, size)),
+        np.empty(size),
+        np.empty((size, nodes)),
+        np.empty((size, nodes)),
+        np.empty(nodes),
+        np.empty((4, span)),
+        np.empty(size),
+        np.empty(model_levels, dtype=np.bool_),
+        np.empty((size, species)),
+        np.zeros((size, species)),
+        np.empty((size, nodes)),
+        np.empty((size, nodes)),
+        np.empty((size, nodes)),
+        np.empty((subcolumns + 1, model_levels), dtype=np.bool_),
+        np.empty(subcolumns + 1),
+        np.empty((2, size)),
+        np.zeros(model_levels),
+        np.empty(size),
+        np.empty((size, nodes)),
+    )
+
+
+@njit(cache=True, nogil=True)
+def _solve_range(
+    start, stop, valid, atmosphere, surface, reference, cloud, optics, view_cosine, emissivity, tables, options, results
+):
+    """Columns start..stop - 1 of `solve_columns`; runs without the interpreter lock."""
+    firsts = tables[4]
+    nodes = 0
+    for channel in range(firsts.size - 1):
+        nodes = max(nodes, firsts[channel + 1] - firsts[channel])
+    work = _work_arrays(
+        atmosphere[1].shape[1], reference[0].size, atmosphere[3].shape[0], cloud[0].shape[0], nodes, options[2]
+    )
+    for c in range(start, stop):
+        if valid[c]:
+            _one_column(
+                c, atmosphere, surface, reference, cloud, optics, view_cosine, emissivity, tables, options, work, results
+            )
+        else:
+            results[:, :, c] = np.nan
+
+
+def solve_columns(
+    valid, atmosphere, surface, reference, cloud, optics, view_cosine, emissivity, tables, options, results, threads=None
+):
+    """Solve many columns.
+
+    Parameters
+    ----------
+    valid : (columns,) bool; other columns get NaN
+    atmosphere : pressure (1 or columns, L) [Pa], temperature (columns, L) [K], specific humidity (columns, L),
+        gases (G, columns, L) mole fractions with NaN for "use the reference", half-level pressure (1 or columns, L + 1)
+    surface : (columns,) each: pressure [Pa], air temperature [K] or NaN, air humidity or NaN, skin temperature [K],
+        height [m]
+    reference : pressure (R,) [Pa], temperature (columns, R) [K], gases (1 + G, columns, R) with water first
+    cloud : mass mixing ratios (S, columns, L) [kg kg-1], ln effective radius [m] (S, columns, L),
+        cloud fraction (columns, L)
+    optics : axis (S, 3), extinction [m2 kg-1], single-scattering albedo, asymmetry (S, radii, nodes)
+    view_cosine : (columns,) cosine of the view zenith angle at the surface
+    emissivity : (channels, columns)
+    tables : absorption table (P, T, slots, nodes) float32, its grid (ln first p, ln step, first T, step),
+        wavenumber (nodes,), weight (nodes,), first node of each channel (channels + 1,)
+    options : overlap (value of OVERLAPS), decorrelation length [m], number of subcolumns
+    results : (len(RESULTS), channels, columns), filled
+    threads : worker threads; None = one for each processor
+    """
+    columns = valid.size
+    threads = threads or os.cpu_count() or 1
+    arguments = (valid, atmosphere, surface, reference, cloud, optics, view_cosine, emissivity, tables, options, results)
+    size = max(1, min(_BLOCK, -(-columns // threads)))
+    starts = range(0, columns, size)
+    if threads == 1 or len(starts) == 1:
+        _solve_range(0, columns, *arguments)
+        return
+    with concurrent.futures.ThreadPoolExecutor(threads) as pool:
+        pending = [pool.submit(_solve_range, start, min(start + size, columns), *arguments) for start in starts]
+        try:
+            for done in pending:
+                done.result()
+        except BaseException:
+            pool.shutdown(wait=True, cancel_futures=True)
+            raise

@@ -1,0 +1,125 @@
+"""The views that a simulation accepts: each gives the zenith angle of every column."""
+
+from dataclasses import dataclass
+
+import numpy as np
+import xarray as xr
+
+from chansim.errors import ViewError
+
+LARGEST_ZENITH = 85.0  # degrees: beyond, a plane-parallel column says nothing about the slanted path
+GEOSTATIONARY_RADIUS = 42164.0e3  # m from the Earth's centre (CGMS LRIT/HRIT global specification)
+EQUATOR_RADIUS, POLE_RADIUS = 6378.137e3, 6356.7523e3  # m, the ellipsoid of the same specification (GRS80 / WGS84)
+
+
+@dataclass(frozen=True)
+class FixedZenith:
+    """The same zenith angle everywhere [degrees]; nadir is 0."""
+
+    angle: float = 0.0
+    largest_zenith: float = LARGEST_ZENITH
+
+    def zenith(self, columns):
+        """View zenith angle of the columns [degrees]."""
+        return np.full(columns["latitude"].shape, self.angle)
+
+    def describe(self):
+        """The view in words."""
+        return "nadir" if self.angle == 0.0 else f"zenith angle {self.angle:g} degrees everywhere"
+
+
+@dataclass(frozen=True)
+class Geostationary:
+    """From above the equator; longitude [degrees_east]."""
+
+    longitude: float
+    largest_zenith: float = LARGEST_ZENITH
+
+    def zenith(self, columns):
+        """View zenith angle of the columns [degrees]; above 90 where the satellite is below the horizon."""
+        return geostationary_zenith(columns["latitude"].values, columns["longitude"].values, self.longitude)
+
+    def describe(self):
+        """The view in words."""
+        return f"geostationary, sub-satellite longitude {self.longitude:g} degrees east"
+
+
+@dataclass(frozen=True)
+class GivenZenith:
+    """Angles that the user brings, on the horizontal grid of the scene."""
+
+    angles: xr.DataArray
+    largest_zenith: float = LARGEST_ZENITH
+
+    def zenith(self, columns):
+        """View zenith angle of the columns [degrees]."""
+        latitude = columns["latitude"]
+        angles = self.angles
+        for dim in latitude.dims:
+            if dim in columns.coords and dim in angles.coords:
+                angles = angles.sel({dim: columns[dim]})
+            elif dim in angles.dims and angles.sizes[dim] != latitude.sizes[dim]:
+                raise ViewError(
+                    f"view angles have {angles.sizes[dim]} points along {dim!r}, the scene piece has "
+                    f"{latitude.sizes[dim]}; give both the same {dim!r} coordinate"
+                )
+        try:
+            return angles.transpose(*latitude.dims).values
+        except ValueError:
+            raise ViewError(f"view angles have dimensions {angles.dims}, the scene {latitude.dims}") from None
+
+    def describe(self):
+        """The view in words."""
+        return "zenith angles given for each column"
+
+
+def geostationary_zenith(latitude, longitude, sub_satellite_longitude):
+    """Angle between the ellipsoid normal and the direction to a geostationary satellite.
+
+    latitude (geodetic), longitude : any shape [degrees]; sub_satellite_longitude [degrees_east]
+
+    Returns
+    -------
+    zenith angle [degrees], 0 below the satellite, above 90 where it is not visible
+    """
+    phi, lam = np.radians(latitude), np.radians(np.asarray(longitude) - sub_satellite_longitude)
+    eccentricity = 1.0 - (POLE_RADIUS / EQUATOR_RADIUS) ** 2
+    normal_radius = EQUATOR_RADIUS / np.sqrt(1.0 - eccentricity * np.sin(phi) ** 2)
+    up = np.stack([np.cos(phi) * np.cos(lam), np.cos(phi) * np.sin(lam), np.sin(phi)])
+    place = normal_radius * up * np.array([1.0, 1.0, 1.0 - eccentricity]).reshape(3, *[1] * phi.ndim)
+    toward = np.array([GEOSTATIONARY_RADIUS, 0.0, 0.0]).reshape(3, *[1] * phi.ndim) - place
+    cosine = np.sum(up * toward, axis=0) / np.sqrt(np.sum(toward**2, axis=0))
+    return np.degrees(np.arccos(np.clip(cosine, -1.0, 1.0)))
+
+
+def as_view(view):
+    """A view object from what users write.
+
+    view : "nadir", zenith angle [degrees], ("geostationary", longitude [degrees_east]), a Dataset with
+        `view_zenith_angle` [degrees], or a view object
+
+    Raises
+    ------
+    ViewError : nothing of these, or an angle outside 0-85 degrees
+    """
+    if hasattr(view, "zenith") and hasattr(view, "describe"):
+        return view
+    if isinstance(view, xr.Dataset):
+        if "view_zenith_angle" not in view:
+            raise ViewError("the view Dataset has no variable view_zenith_angle [degrees]")
+        return GivenZenith(view["view_zenith_angle"])
+    if isinstance(view, str) and view == "nadir":
+        return FixedZenith(0.0)
+    if isinstance(view, (int, float)) and not isinstance(view, bool):
+        if not 0.0 <= view < LARGEST_ZENITH:
+            raise ViewError(f"zenith angle {view:g} degrees: give 0 to {LARGEST_ZENITH:g}")
+        return FixedZenith(float(view))
+    if isinstance(view, (tuple, list)) and len(view) == 2 and view[0] == "geostationary":
+        longitude = float(view[1])
+        if not -180.0 <= longitude <= 360.0:
+            raise ViewError(f"sub-satellite longitude {longitude:g}: give -180 to 360 degrees east")
+        return Geostationary(longitude)
+    raise ViewError(
+        f"view {view!r}: give 'nadir', a zenith angle in degrees, ('geostationary', longitude), or a Dataset with "
+        "view_zenith_angle"
+    )

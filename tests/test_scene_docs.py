@@ -1,0 +1,25 @@
+"""The examples of docs/reading_model_files.md, run in order in an empty folder."""
+
+import re
+from pathlib import Path
+
+import chansim  # noqa: F401
+
+PAGE = Path(__file__).parents[1] / "docs" / "reading_model_files.md"
+
+
+def test_examples_run(tmp_path, monkeypatch, capsys):
+    monkeypatch.chdir(tmp_path)
+    examples = re.findall(r"```python\n(.*?)```", PAGE.read_text(encoding="utf-8"), flags=re.DOTALL)
+    assert len(examples) >= 8
+    names = {}
+    for example in examples:
+        exec(compile(example, str(PAGE), "exec"), names)
+    printed = capsys.readouterr().out
+    for piece in (
+        "This source can be used.",
+        "over ice below freezing",
+        "degC called K",
+        "above the top level (514 hPa)",
+    ):
+        assert piece in printed
