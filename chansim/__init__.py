@@ -1,6 +1,27 @@
-"""chansim: weather-model output as an infrared satellite image."""
+"""chansim: weather-model output as an infrared satellite image.
 
-from chansim import _import_order  # noqa: F401  (must stay first; see that module)
+    import chansim
+    scene = chansim.open_scene("forecast.grib2")
+    picture = chansim.simulate(scene, "tarn", channels=["wv063", "ir104"], view=("geostationary", 40.0))
+
+A simulation is not an observation: official warnings and licensed practice come first.
+"""
+
+from chansim import _import_order  # noqa: F401, I001  (must stay first; see that module)
 from chansim._version import __version__
+from chansim.channels.imager import load_imager
+from chansim.errors import ChansimError
+from chansim.scene.profiles import scene_from_profile
+from chansim.scene.reading import describe_scene, open_scene
+from chansim.simulate import Settings, simulate
 
-__all__ = ["__version__"]
+__all__ = [
+    "ChansimError",
+    "Settings",
+    "__version__",
+    "describe_scene",
+    "load_imager",
+    "open_scene",
+    "scene_from_profile",
+    "simulate",
+]

@@ -80,7 +80,10 @@ def _add_view_options(parser):
     view.add_argument("--nadir", action="store_true", help="look straight down everywhere (default)")
     view.add_argument("--zenith", type=float, metavar="DEGREES", help="the same zenith angle everywhere")
     view.add_argument(
-        "--geostationary", type=float, metavar="LONGITUDE", help="from above the equator at this longitude, degrees east"
+        "--geostationary",
+        type=float,
+        metavar="LONGITUDE",
+        help="from above the equator at this longitude, degrees east",
     )
 
 
@@ -203,7 +206,9 @@ def _summary(result, output):
     lines.append("brightness temperature [K]   coldest   mean  warmest")
     for channel in result["channel"].values:
         values = result["brightness_temperature"].sel(channel=channel)
-        lines.append(f"  {str(channel):24s} {float(values.min()):9.1f} {float(values.mean()):7.1f} {float(values.max()):8.1f}")
+        lines.append(
+            f"  {str(channel):24s} {float(values.min()):9.1f} {float(values.mean()):7.1f} {float(values.max()):8.1f}"
+        )
     lines.append("A simulation, not an observation. Official warnings come first.")
     return "\n".join(lines)
 
@@ -230,7 +235,9 @@ def _simulate(options):
     check_target(options.output, existing)
     scene = open_scene(options.file, time=options.time, mapping=options.mapping)
     gases = {} if options.co2 is None else {"co2": options.co2 * 1e-6}
-    result = _run_simulation(scene, options.imager, _ids(options.channels), _view(options), options.output, existing, gases)
+    result = _run_simulation(
+        scene, options.imager, _ids(options.channels), _view(options), options.output, existing, gases
+    )
     if options.draw:
         _make_folder(Path(options.draw))
         _draw_all(result, Path(options.draw), "auto", "source", existing, sheet=True)
@@ -316,7 +323,8 @@ def describe_channel(channel):
         f"within {channel.band_residual:.4f} K over 180-340 K",
         f"  nodes             {channel.node_wavenumber.size} wavenumbers; fit {channel.fit_error:.3f} K rms, "
         f"{channel.fit_worst:.3f} K worst over clear and cloudy test scenes",
-        "  node, weight      " + "  ".join(f"{n:.3f} {w:.4f}" for n, w in zip(channel.node_wavenumber, channel.node_weight)),
+        "  node, weight      "
+        + "  ".join(f"{n:.3f} {w:.4f}" for n, w in zip(channel.node_wavenumber, channel.node_weight)),
     ]
     return "\n".join(lines + [f"  note              {note}" for note in channel.notes])
 

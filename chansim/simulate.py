@@ -34,6 +34,7 @@ _TRACE_GASES = {
 }
 _GAS_NAMES = {gas: name for name, gas in _TRACE_GASES.items()} | {"o3": "ozone_mole_fraction"}
 _COLUMNS_AT_ONCE = 16384
+_REFERENCE_STRIDE = 3  # of its levels, which lie 5 % apart in pressure: as fine as the solver needs
 
 
 @dataclass(frozen=True)
@@ -53,7 +54,7 @@ class Settings:
     decorrelation_length: float = 2000.0
     liquid_radius: str = "martin-1994"
     ice_radius: str = "sun-2001"
-    ice_habit: str = "default"
+    ice_habit: str = "equal-volume-to-area"
     gases: dict = field(default_factory=dict)
 
 
@@ -125,8 +126,10 @@ def _well_mixed(requested, given):
     profiles = {}
     unknown = set(requested) - set(_TRACE_GASES.values())
     if unknown:
-        raise SceneError(f"cannot set the mole fraction of {', '.join(sorted(unknown))}; "
-                         f"settable: {', '.join(_TRACE_GASES.values())}")
+        raise SceneError(
+            f"cannot set the mole fraction of {', '.join(sorted(unknown))}; "
+            f"settable: {', '.join(_TRACE_GASES.values())}"
+        )
     for name, gas in _TRACE_GASES.items():
         if gas in given:
             continue
@@ -160,7 +163,9 @@ def _half_pressure(slab, dims, count, pressure):
     if half is not None:
         return half
     middle = np.sqrt(pressure[:, :-1] * pressure[:, 1:])
-    return np.concatenate([pressure[:, :1] ** 2 / middle[:, :1], middle, pressure[:, -1:] ** 2 / middle[:, -1:]], axis=1)
+    return np.concatenate(
+        [pressure[:, :1] ** 2 / middle[:, :1], middle, pressure[:, -1:] ** 2 / middle[:, -1:]], axis=1
+    )
 
 
 def _day_of_year(slab):
@@ -180,7 +185,12 @@ def _reference(slab, dims, count, given):
     profile = reference_profile(rounded, _day_of_year(slab))
     names = [REFERENCE_GASES[0]] + [_GAS_NAMES[gas] for gas in given]
     gases = np.stack([profile[name][where] for name in names])
-    return profile["pressure"], np.ascontiguousarray(profile["temperature"][where]), gases
+    thin = np.s_[..., ::_REFERENCE_STRIDE]
+    return (
+        np.ascontiguousarray(profile["pressure"][thin]),
+        np.ascontiguousarray(profile["temperature"][thin][where]),
+        np.ascontiguousarray(gases[thin]),
+    )
 
 
 def _clouds(slab, settings, dims, count, levels, pressure, temperature, counts):
@@ -192,16 +202,43 @@ def _clouds(slab, settings, dims, count, levels, pressure, temperature, counts):
             mixing[s] = np.nan_to_num(values, nan=0.0)
     fraction = _profiles(slab, "cloud_fraction", dims, count)
     fraction = np.ones((count, levels)) if fraction is None else np.nan_to_num(fraction, nan=0.0)
-    counts["condensate without cloud fraction"] = counts.get("condensate without cloud fraction", 0) + int(
-        ((mixing.sum(axis=0) > 1e-8) & (fraction <= 0.0)).sum()
-    )
-    fields = {name: _profiles(slab, name, dims, count) for name in
-              ("effective_radius_liquid", "effective_radius_ice", "number_liquid", "number_ice")}
+    fraction = _fraction_everywhere(mixing, np.clip(fraction, 0.0, 1.0), counts)
+    fields = {
+        name: _profiles(slab, name, dims, count)
+        for name in ("effective_radius_liquid", "effective_radius_ice", "number_liquid", "number_ice")
+    }
     land = _columns(slab, "land_fraction", dims, count, 0.0)
     latitude = _columns(slab, "latitude", dims, count, 45.0)
-    radius = effective_radii(mixing, fraction, pressure, temperature, land, latitude, fields, settings.liquid_radius,
-                             settings.ice_radius, counts)
-    return mixing, np.log(radius), np.clip(fraction, 0.0, 1.0)
+    radius = effective_radii(
+        mixing,
+        fraction,
+        pressure,
+        temperature,
+        land,
+        latitude,
+        fields,
+        settings.liquid_radius,
+        settings.ice_radius,
+        counts,
+    )
+    return mixing, np.log(radius), fraction
+
+
+def _fraction_everywhere(mixing, fraction, counts):
+    """Cloud fraction with a value wherever there is condensate.
+
+    Precipitation below its cloud takes the largest fraction above it; cloud without a fraction fills its cell.
+    """
+    cloud = (mixing[:2].sum(axis=0) > 1e-9) & (fraction <= 0.0)
+    fraction = np.where(cloud, 1.0, fraction)
+    falling = (mixing[2:].sum(axis=0) > 1e-9) & (fraction <= 0.0)
+    above = np.maximum.accumulate(fraction, axis=1)
+    for name, cells in (
+        ("cloudy cells without cloud fraction, taken as overcast", cloud),
+        ("cells of precipitation without cloud fraction, given that of the cloud above", falling),
+    ):
+        counts[name] = counts.get(name, 0) + int(cells.sum())
+    return np.where(falling, np.where(above > 0.0, above, 1.0), fraction)
 
 
 def _solve_slab(slab, imager, view, settings, emissivity, tables, optics, dims, counts, piece):
@@ -218,20 +255,40 @@ def _solve_slab(slab, imager, view, settings, emissivity, tables, optics, dims, 
     zenith = np.broadcast_to(view.zenith(slab), shape).reshape(count)
     valid = slab["column_valid"].transpose(*dims).values.reshape(count) & (zenith < view.largest_zenith)
     surface_pressure = _columns(slab, "surface_pressure", dims, count, np.nan)
-    surface = (surface_pressure, _columns(slab, "air_temperature_2m", dims, count, np.nan),
-               _columns(slab, "specific_humidity_2m", dims, count, np.nan),
-               _columns(slab, "skin_temperature", dims, count, np.nan), _columns(slab, "orography", dims, count, 0.0))
+    surface = (
+        surface_pressure,
+        _columns(slab, "air_temperature_2m", dims, count, np.nan),
+        _columns(slab, "specific_humidity_2m", dims, count, np.nan),
+        _columns(slab, "skin_temperature", dims, count, np.nan),
+        _columns(slab, "orography", dims, count, 0.0),
+    )
     surface_emissivity = _emissivity(slab, imager, zenith, emissivity, dims, count, piece)
     results = np.full((len(RESULTS), len(imager.channels), count), np.nan)
-    grid = (np.log(PRESSURES[0]), np.log(PRESSURES[1] / PRESSURES[0]), TEMPERATURES[0], TEMPERATURES[1] - TEMPERATURES[0])
+    grid = (
+        np.log(PRESSURES[0]),
+        np.log(PRESSURES[1] / PRESSURES[0]),
+        TEMPERATURES[0],
+        TEMPERATURES[1] - TEMPERATURES[0],
+    )
     solve_columns(
-        np.ascontiguousarray(valid), (pressure, temperature, _profiles(slab, "specific_humidity", dims, count), gases,
-                _half_pressure(slab, dims, count, pressure)),
-        surface, _reference(slab, dims, count, tables.gases),
-        _clouds(slab, settings, dims, count, levels, pressure, temperature, counts), optics,
-        np.cos(np.radians(np.where(valid, zenith, 0.0))), surface_emissivity,
+        np.ascontiguousarray(valid),
+        (
+            pressure,
+            temperature,
+            _profiles(slab, "specific_humidity", dims, count),
+            gases,
+            _half_pressure(slab, dims, count, pressure),
+        ),
+        surface,
+        _reference(slab, dims, count, tables.gases),
+        _clouds(slab, settings, dims, count, levels, pressure, temperature, counts),
+        optics,
+        np.cos(np.radians(np.where(valid, zenith, 0.0))),
+        surface_emissivity,
         (tables.table, grid, tables.wavenumber, tables.weight, tables.first),
-        (OVERLAPS[settings.overlap], float(settings.decorrelation_length), int(settings.subcolumns)), results)
+        (OVERLAPS[settings.overlap], float(settings.decorrelation_length), int(settings.subcolumns)),
+        results,
+    )
     return results.reshape(len(RESULTS), len(imager.channels), *shape), zenith.reshape(shape)
 
 
@@ -242,12 +299,19 @@ def _emissivity(slab, imager, zenith, given, dims, count, piece):
         classes = None
         if "surface_class" in slab:
             classes = slab["surface_class"].transpose(*dims).values.reshape(count).astype(np.int64)
-        return channel_emissivity(classes, _columns(slab, "land_fraction", dims, count, 0.0), np.clip(zenith, 0.0, 85.0),
-                                  _columns(slab, "wind_speed_10m", dims, count, 7.0),
-                                  [c.node_wavenumber for c in channels], [c.node_weight for c in channels])
+        return channel_emissivity(
+            classes,
+            _columns(slab, "land_fraction", dims, count, 0.0),
+            np.clip(zenith, 0.0, 85.0),
+            _columns(slab, "wind_speed_10m", dims, count, 7.0),
+            [c.node_wavenumber for c in channels],
+            [c.node_weight for c in channels],
+        )
     values = np.asarray(given, dtype=float)
     if values.shape[:1] != (len(channels),):
-        raise SceneError(f"emissivity: {values.shape} given; the first dimension must be the {len(channels)} channel(s)")
+        raise SceneError(
+            f"emissivity: {values.shape} given; the first dimension must be the {len(channels)} channel(s)"
+        )
     if values.ndim > 1:
         values = values[:, piece]
     values = np.broadcast_to(values.reshape(len(channels), -1), (len(channels), count))
@@ -259,8 +323,11 @@ def _emissivity(slab, imager, zenith, given, dims, count, piece):
 _LONG_NAMES = {
     "radiance": ("simulated radiance", "mW m-2 sr-1 (cm-1)-1", "toa_outgoing_radiance_per_unit_wavenumber"),
     "brightness_temperature": ("simulated brightness temperature", "K", "toa_brightness_temperature"),
-    "brightness_temperature_clear": ("the same without condensate", "K",
-                                     "toa_brightness_temperature_assuming_clear_sky"),
+    "brightness_temperature_clear": (
+        "the same without condensate",
+        "K",
+        "toa_brightness_temperature_assuming_clear_sky",
+    ),
     "surface_transmittance": ("transmittance from the surface to the top, condensate included", "1", None),
     "cloud_optical_thickness": ("extinction optical thickness of all condensate, grid mean", "1", None),
     "weighting_function_peak": ("pressure where transmittance changes most with ln p", "Pa", None),
@@ -269,9 +336,12 @@ _LONG_NAMES = {
 
 def _as_dataset(scene, imager, view, settings, out, zenith, dims, counts, atlas):
     channels = imager.channels
-    fields = {"radiance": out["radiance"], "surface_transmittance": out["transmittance"],
-              "cloud_optical_thickness": out["cloud_optical_thickness"],
-              "weighting_function_peak": out["peak_pressure"]}
+    fields = {
+        "radiance": out["radiance"],
+        "surface_transmittance": out["transmittance"],
+        "cloud_optical_thickness": out["cloud_optical_thickness"],
+        "weighting_function_peak": out["peak_pressure"],
+    }
     for name, source in (("brightness_temperature", "radiance"), ("brightness_temperature_clear", "radiance_clear")):
         fields[name] = np.stack([c.brightness_temperature(out[source][i]) for i, c in enumerate(channels)])
     mapping = "grid_mapping" if "grid_mapping" in scene else None
@@ -284,8 +354,11 @@ def _as_dataset(scene, imager, view, settings, out, zenith, dims, counts, atlas)
         if mapping:
             attributes["grid_mapping"] = mapping
         data[name] = (("channel", *dims), values.astype(np.float32), attributes)
-    data["view_zenith_angle"] = (dims, zenith, {"long_name": "zenith angle of the imager", "units": "degree",
-                                                "standard_name": "sensor_zenith_angle"})
+    data["view_zenith_angle"] = (
+        dims,
+        zenith,
+        {"long_name": "zenith angle of the imager", "units": "degree", "standard_name": "sensor_zenith_angle"},
+    )
     for name in ("land_fraction", "grid_mapping"):
         if name in scene:
             data[name] = scene[name]
@@ -302,8 +375,11 @@ def _coordinates(scene, channels, dims):
         "channel": [c.id for c in channels],
         "channel_name": along([c.name for c in channels]),
         "channel_kind": along([c.kind for c in channels]),
-        "central_wavenumber": along([c.central_wavenumber for c in channels], units="cm-1",
-                                    standard_name="sensor_band_central_radiation_wavenumber"),
+        "central_wavenumber": along(
+            [c.central_wavenumber for c in channels],
+            units="cm-1",
+            standard_name="sensor_band_central_radiation_wavenumber",
+        ),
         "bandwidth": along([c.bandwidth for c in channels], units="cm-1"),
         "band_offset": along([c.band_offset for c in channels], units="K"),
         "band_slope": along([c.band_slope for c in channels], units="1"),

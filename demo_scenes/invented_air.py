@@ -85,7 +85,7 @@ def sea_level_pressure(longitude, latitude):
     """[Pa]: a deep low, a subtropical high over the sea, a cold high over the continent."""
     x, y = longitude, latitude
     low = -3200.0 * np.exp(-np.hypot((x - LOW_CENTRE[0]) * 0.78, y - LOW_CENTRE[1]) / 4.5)
-    high = 1100.0 * bell(x, y, 22.0, 23.0, 16.0, 8.0) + 1900.0 * bell(x, y, 58.0, 38.0, 16.0, 9.0)
+    high = 800.0 * bell(x, y, 22.0, 23.0, 16.0, 8.0) + 1900.0 * bell(x, y, 58.0, 38.0, 16.0, 9.0)
     return 101250.0 - 330.0 * bell(x, y, 36.0, 0.0, 25.0, 7.0) + high + low
 
 
@@ -96,9 +96,9 @@ def wind_speed(longitude, latitude):
     slope_y = sea_level_pressure(longitude, latitude + d) - sea_level_pressure(longitude, latitude - d)
     slope = np.hypot(slope_x / np.cos(np.radians(latitude)), slope_y) / (2.0 * d * 1.112e5)
     coriolis = np.maximum(1.458e-4 * np.abs(np.sin(np.radians(latitude))), 3.5e-5)
-    trades = 4.5 * bell(0.0 * longitude, latitude, 0.0, 13.0, 1.0, 8.0)
+    trades = 3.0 * bell(0.0 * longitude, latitude, 0.0, 13.0, 1.0, 8.0)
     gusts = 1.0 + 0.18 * smooth_noise(longitude, latitude, wavelength=5.0, seed=44)
-    return np.clip((0.62 * slope / (1.2 * coriolis) + trades + 2.0) * gusts, 0.5, 28.0)
+    return np.clip((0.50 * slope / (1.2 * coriolis) + trades + 2.0) * gusts, 0.5, 28.0)
 
 
 def dryness(longitude, latitude):
@@ -125,14 +125,13 @@ def relative_humidity(longitude, latitude, pressure, surface_pressure):
     moist = (1.0 - step(y + 1.5 * smooth_noise(x, y, wavelength=18.0, seed=46), 11.0, 9.0))
     winter = step(y, 30.0, 10.0)
     near_front = np.exp(-((front_distance(x, y) + 1.2) / 2.2) ** 2) * winter
-    filaments = smooth_noise(*unwound(*warped(x, y, wavelength=8.0, amplitude=0.7, seed=47)), wavelength=11.0, seed=49,
-                             octaves=5)
-    middle = 0.22 + 0.36 * moist + 0.18 * winter + 0.30 * near_front
+    filaments = smooth_noise(*unwound(*warped(x, y, wavelength=8.0, amplitude=0.7, seed=47)), wavelength=11.0, seed=49)
+    middle = 0.20 + 0.31 * moist + 0.18 * winter + 0.30 * near_front
     middle = middle * np.exp(0.30 * filaments) * (1.0 - 0.80 * dryness(x, y))
     low = 0.80 - 0.12 * step(y, 30.0, 8.0)
     depth = 0.115 + 0.16 * moist + 0.06 * winter + 0.3 * near_front
     above = np.clip(1.0 - pressure / surface_pressure, 0.0, 1.0)
-    mixed = low + 0.10 * np.clip(above / depth, 0.0, 1.0)
+    mixed = low + 0.05 * np.clip(above / depth, 0.0, 1.0)
     return np.clip(mixed + (np.clip(middle, 0.025, 0.85) - mixed) * step(above, depth, 0.05 + 0.25 * moist), 0.02, 0.93)
 
 
@@ -144,4 +143,5 @@ def tropopause_pressure(mass):
 def dried_above_tropopause(specific_humidity, pressure, tropopause):
     """Humidity [kg/kg] going over into that of the stratosphere across the tropopause."""
     share = step(np.log(tropopause / pressure), 0.12, 0.5)
-    return np.exp((1.0 - share) * np.log(specific_humidity) + share * np.log(_STRATOSPHERIC_HUMIDITY))
+    tropospheric = np.maximum(specific_humidity, _STRATOSPHERIC_HUMIDITY)
+    return np.exp((1.0 - share) * np.log(tropospheric) + share * np.log(_STRATOSPHERIC_HUMIDITY))

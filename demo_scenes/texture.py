@@ -90,6 +90,12 @@ def step(value, edge, width):
     return 0.5 * (1.0 + np.tanh(2.0 * (value - edge) / width))
 
 
+def ramp(value, low, high):
+    """0 below `low`, 1 above `high`, smooth in between; unlike `step` exactly 0 and 1 outside."""
+    share = np.clip((value - low) / (high - low), 0.0, 1.0)
+    return share * share * (3.0 - 2.0 * share)
+
+
 def bell(x, y, centre_x, centre_y, radius_x, radius_y, power=2.0):
     """exp(-r**power) with r in units of the radii."""
     return np.exp(-(np.hypot((x - centre_x) / radius_x, (y - centre_y) / radius_y) ** power))

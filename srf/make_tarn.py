@@ -40,7 +40,12 @@ def main(folder=Path(__file__).parent / "tarn"):
         rows = [f"{w:.5f} {v:.5f}" for w, v in zip(wavelength[keep], values[keep])]
         text = [f"# Tarn, channel {name}: {words} (an invented imager)", "# wavelength [um]  relative response [1]"]
         (folder / f"{name}.txt").write_text("\n".join(text + rows) + "\n")
-    lines = ['id = "tarn"', 'name = "Tarn ten-channel infrared imager (invented)"', "sub_satellite_longitude = 40.0", ""]
+    lines = [
+        'id = "tarn"',
+        'name = "Tarn ten-channel infrared imager (invented)"',
+        "sub_satellite_longitude = 40.0",
+        "",
+    ]
     for name, words, *_ in CHANNELS:
         lines += ["[[channel]]", f'id = "{name}"', f'name = "{words}"', f'response = "{name}.txt"', ""]
     (folder / "imager.toml").write_text("\n".join(lines))

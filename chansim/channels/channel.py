@@ -35,7 +35,7 @@ _FIT_TEMPERATURES = np.arange(180.0, 341.0, 2.0)  # K, range of the band-correct
 _IMPORTANCE = np.array([1.0, 0.5, 0.35])  # of clear, reflecting and cloud-top scenes
 _BLACK_TEMPERATURES = np.linspace(185.0, 335.0, 16)  # K
 _BLACK_IMPORTANCE = 4.0  # against a training scene
-_RECIPE = "3"  # raise when preparation changes, so that old cache files are not used
+_RECIPE = "4"  # raise when preparation changes, so that old cache files are not used
 
 
 @dataclass(frozen=True)
@@ -199,7 +199,10 @@ def _with_black_bodies(scaled, target, node_wavenumber, reference, wavenumber):
     """Adds opaque scenes of one temperature: they hold the weights to the Planck function of the channel."""
     black = planck(node_wavenumber, _BLACK_TEMPERATURES[:, None]) * _BLACK_IMPORTANCE
     scale = 1.0 / planck_temperature_slope(wavenumber, _BLACK_TEMPERATURES)
-    return (np.concatenate([scaled, black * scale[:, None]]), np.concatenate([target, ((black @ reference) * scale)[:, None]]))
+    return (
+        np.concatenate([scaled, black * scale[:, None]]),
+        np.concatenate([target, ((black @ reference) * scale)[:, None]]),
+    )
 
 
 def prepare_channel(response, *, channel_id=None, name=None, atlas=None, tolerance=TOLERANCE, most_nodes=MOST_NODES):

@@ -1,13 +1,13 @@
 """An imager: a folder of response functions with a small TOML file.
 
-    id = "tarn"
-    name = "words for titles"
-    sub_satellite_longitude = 40.0        # optional, degrees east
+id = "tarn"
+name = "words for titles"
+sub_satellite_longitude = 40.0        # optional, degrees east
 
-    [[channel]]
-    id = "wv063"
-    name = "upper-level water vapour"     # optional
-    response = "wv063.txt"                # text or netCDF, relative to this file
+[[channel]]
+id = "wv063"
+name = "upper-level water vapour"     # optional
+response = "wv063.txt"                # text or netCDF, relative to this file
 """
 
 import importlib.resources

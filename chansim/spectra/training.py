@@ -77,9 +77,11 @@ def _water(rng, pressure, temperature):
 
 def _ozone(rng, pressure):
     log_p = np.log(pressure)
-    peak, where, width = rng.uniform(4e-6, 11e-6), np.log(rng.uniform(600.0, 1400.0)), rng.uniform(1.0, 1.5)
+    peak, where = rng.uniform(4e-6, 11e-6), np.log(rng.uniform(500.0, 1500.0))
+    width = np.where(log_p > where, rng.uniform(0.7, 1.35), rng.uniform(1.0, 1.9))  # below and above the peak
     layer = peak * np.exp(-0.5 * ((log_p - where) / width) ** 2)
-    return layer + rng.uniform(1e-8, 9e-8) + 1.2e-6 * np.exp(-0.5 * ((log_p - np.log(20.0)) / 1.3) ** 2)
+    low = rng.uniform(1e-8, 9e-8) * np.exp(rng.uniform(-0.3, 0.8) * np.log(101325.0 / pressure).clip(0.0, 2.0))
+    return layer + low + rng.uniform(0.2e-6, 1.6e-6) * np.exp(-0.5 * ((log_p - np.log(20.0)) / 1.3) ** 2)
 
 
 def _trace(rng, pressure, surface_value, half_pressure, slope):

@@ -23,8 +23,8 @@ def absorbed_fraction(path):
 def far_weight(path, absorbed):
     """Weight of the far side's Planck function in the emission of a layer, per absorbed fraction [1].
 
-    Emission = absorbed x (B_near + (B_far - B_near) x far_weight); the integral of a source linear in
-optical depth with a small bend.
+        Emission = absorbed x (B_near + (B_far - B_near) x far_weight); the integral of a source linear in
+    optical depth with a small bend.
     """
     if path < 1e-3:
         return 0.5 - path / 12.0

@@ -105,8 +105,11 @@ def source_bends(layers, level_p, level_t, tau, planck_level, wavenumber, first,
         for i in range(last - first):
             slope = 0.0
             if span > 0.0:
-                slope = 2.0 * thickness / span * density_slope(
-                    tau[up, i] / thickness_up, tau[j, i] / thickness, tau[down, i] / thickness_down
+                slope = (
+                    2.0
+                    * thickness
+                    / span
+                    * density_slope(tau[up, i] / thickness_up, tau[j, i] / thickness, tau[down, i] / thickness_down)
                 )
             factor = middle_factor(wavenumber[first + i], level_t[j], level_t[j + 1])
             bend[j, i] = source_bend(planck_level[j, i], planck_level[j + 1, i], factor, min(max(slope, -2.0), 2.0))
@@ -394,6 +397,8 @@ def _one_column(
                             thickness += share[m] * weight[first + i] * cloud_tau[j, i]
                     else:
                         cloud_tau[j, : last - first] = 0.0
+                        cloud_omega[j, : last - first] = 0.0
+                        cloud_g[j, : last - first] = 0.0
                 if empty:
                     total += share[m] * clear
                     for j in range(levels):
@@ -481,14 +486,36 @@ def _solve_range(
     for c in range(start, stop):
         if valid[c]:
             _one_column(
-                c, atmosphere, surface, reference, cloud, optics, view_cosine, emissivity, tables, options, work, results
+                c,
+                atmosphere,
+                surface,
+                reference,
+                cloud,
+                optics,
+                view_cosine,
+                emissivity,
+                tables,
+                options,
+                work,
+                results,
             )
         else:
             results[:, :, c] = np.nan
 
 
 def solve_columns(
-    valid, atmosphere, surface, reference, cloud, optics, view_cosine, emissivity, tables, options, results, threads=None
+    valid,
+    atmosphere,
+    surface,
+    reference,
+    cloud,
+    optics,
+    view_cosine,
+    emissivity,
+    tables,
+    options,
+    results,
+    threads=None,
 ):
     """Solve many columns.
 
@@ -513,7 +540,19 @@ def solve_columns(
     """
     columns = valid.size
     threads = threads or os.cpu_count() or 1
-    arguments = (valid, atmosphere, surface, reference, cloud, optics, view_cosine, emissivity, tables, options, results)
+    arguments = (
+        valid,
+        atmosphere,
+        surface,
+        reference,
+        cloud,
+        optics,
+        view_cosine,
+        emissivity,
+        tables,
+        options,
+        results,
+    )
     size = max(1, min(_BLOCK, -(-columns // threads)))
     starts = range(0, columns, size)
     if threads == 1 or len(starts) == 1:

@@ -1,0 +1,161 @@
+"""Optical properties of all condensate, ready for the compiled solvers."""
+
+import functools
+
+import netCDF4
+import numpy as np
+import xarray as xr
+
+from chansim.errors import DataError, OpticsError
+from chansim.optics.particle_size import (
+    ICE_DENSITY,
+    ICE_RADIUS,
+    LIQUID_RADIUS,
+    PRECIPITATION,
+    WATER_DENSITY,
+    exponential_radius,
+    volume_radius,
+)
+from chansim.optics.refractive_index import verified_bytes
+
+SPECIES = ("cloud_liquid", "cloud_ice", "rain", "snow", "graupel")
+# ice as spheres of equal volume-to-area ratio (Grenfell & Warren 1999, J. Geophys. Res. 104, 31697): the route
+# makes the optics a function of the effective radius alone, whatever the crystal shape
+HABITS = ("equal-volume-to-area",)
+_DRY_AIR = 287.05  # J kg-1 K-1
+_NUMBER_TO_RADIUS = np.cbrt(1.0 / 0.8)  # effective over volume radius of a spectrum given by its number (as over sea)
+
+
+@functools.cache
+def load_tables():
+    """The packaged tables as an xarray.Dataset. Raises DataError."""
+    content = verified_bytes("cloud_optics.nc")
+    try:
+        with netCDF4.Dataset("cloud_optics.nc", memory=content) as file:
+            return xr.open_dataset(xr.backends.NetCDF4DataStore(file)).load()
+    except (OSError, ValueError) as error:
+        raise DataError(f"cloud_optics.nc cannot be read ({error}); reinstall chansim") from None
+
+
+def _check_habit(habit):
+    if habit not in HABITS:
+        raise OpticsError(f"unknown ice habit {habit!r}; there is {', '.join(HABITS)}")
+
+
+def radius_axis(species):
+    """(ln of the first radius [m], step, count) of the radius axis of a species."""
+    radius = load_tables()[f"{species}_radius"].values
+    return np.log(radius[0]), np.log(radius[1] / radius[0]), radius.size
+
+
+def condensate_optics(wavenumber, ice_habit=HABITS[0]):
+    """Extinction, albedo and asymmetry of every species at some wavenumbers.
+
+    Parameters
+    ----------
+    wavenumber : (nodes,) [cm-1]
+    ice_habit : one of `HABITS`
+
+    Returns
+    -------
+    axis : (species, 3) ln first radius [m], ln step, number of radii
+    extinction : (species, radii, nodes) [m2 kg-1]
+    albedo, asymmetry : (species, radii, nodes) [1]; shorter radius axes repeat their last entry
+
+    Raises
+    ------
+    OpticsError : unknown habit; DataError : tables missing or damaged
+    """
+    _check_habit(ice_habit)
+    axis = np.array([radius_axis(species) for species in SPECIES])
+    most = int(axis[:, 2].max())
+    out = [
+        np.stack([_at_nodes(f"{species}_{name}", wavenumber, most) for species in SPECIES])
+        for name in ("extinction", "albedo", "asymmetry")
+    ]
+    return (axis, *out)
+
+
+def condensate_moments(wavenumber, count=64, ice_habit=HABITS[0]):
+    """Legendre moments chi_l (chi_0 = 1, chi_1 = asymmetry): (species, radii, nodes, count)."""
+    _check_habit(ice_habit)
+    most = int(max(radius_axis(species)[2] for species in SPECIES))
+    return np.stack([_at_nodes(f"{species}_moments", wavenumber, most)[..., :count] for species in SPECIES])
+
+
+def _at_nodes(name, wavenumber, most):
+    """One table, linear in wavenumber, padded to `most` radii."""
+    tables = load_tables()
+    grid = tables["wavenumber"].values
+    values = tables[name].values.astype(float)  # (radii, wavenumber, ...)
+    i = np.clip(np.searchsorted(grid, wavenumber) - 1, 0, grid.size - 2)
+    w = ((wavenumber - grid[i]) / (grid[i + 1] - grid[i])).reshape(-1, *[1] * (values.ndim - 2))
+    at = values[:, i] * (1.0 - w) + values[:, i + 1] * w
+    padding = [(0, most - at.shape[0])] + [(0, 0)] * (at.ndim - 1)
+    return np.ascontiguousarray(np.pad(at, padding, mode="edge"))
+
+
+def effective_radii(mixing, fraction, pressure, temperature, land_fraction, latitude, fields, liquid_radius, ice_radius,
+                    counts):  # fmt: skip
+    """Effective radius of every species in every cell.
+
+    Parameters
+    ----------
+    mixing : (species, columns, levels) grid-mean mass mixing ratio [kg kg-1]
+    fraction : (columns, levels) cloud fraction [1]
+    pressure : (1 or columns, levels) [Pa]; temperature : (columns, levels) [K]
+    land_fraction, latitude : (columns,)
+    fields : effective_radius_liquid, effective_radius_ice [m], number_liquid, number_ice [kg-1]: (columns, levels)
+        or None; they are used where they are positive
+    liquid_radius, ice_radius : names, see particle_size.LIQUID_RADIUS and ICE_RADIUS
+    counts : dict, how many cells were clamped is added to it
+
+    Returns
+    -------
+    (species, columns, levels) [m], inside the tables; 1e-5 where there is no condensate
+
+    Raises
+    ------
+    OpticsError : unknown parametrisation
+    """
+    for name, known in ((liquid_radius, LIQUID_RADIUS), (ice_radius, ICE_RADIUS)):
+        if name not in known:
+            raise OpticsError(f"unknown effective radius {name!r}; there is {', '.join(known)}")
+    radius = np.full(mixing.shape, 1e-5)
+    density = np.broadcast_to(pressure / (_DRY_AIR * temperature), temperature.shape)
+    land = np.broadcast_to(np.asarray(land_fraction)[:, None], temperature.shape)
+    for s, species in enumerate(SPECIES):
+        there = (mixing[s] > 0.0) & (fraction > 0.0)
+        if not there.any():
+            continue
+        air = density[there]
+        content = mixing[s][there] / fraction[there] * air
+        if species == "cloud_liquid":
+            value = LIQUID_RADIUS[liquid_radius](content, land[there])
+            value = _from_fields(value, content, there, air, fields, "liquid", WATER_DENSITY, fraction)
+        elif species == "cloud_ice":
+            value = ICE_RADIUS[ice_radius](content, temperature[there])
+            value = _from_fields(value, content, there, air, fields, "ice", ICE_DENSITY, fraction)
+        else:
+            value = exponential_radius(content, *PRECIPITATION[species])
+        first, step, size = radius_axis(species)
+        low, high = np.exp(first), np.exp(first + step * (size - 1))
+        name = f"cells with effective radius of {species} clamped to {low * 1e6:.0f}-{high * 1e6:.0f} um"
+        counts[name] = counts.get(name, 0) + int(((value < low * 0.999) | (value > high * 1.001)).sum())
+        radius[s][there] = np.clip(value, low, high)
+    return radius
+
+
+def _from_fields(value, content, there, air, fields, phase, density, fraction):
+    """The model's own radius, else its number, where they are given."""
+    number = fields.get(f"number_{phase}")
+    if number is not None:
+        per_volume = number[there] * air / fraction[there]
+        known = per_volume > 0.0
+        value = np.where(
+            known, volume_radius(content, np.where(known, per_volume, 1.0), density) * _NUMBER_TO_RADIUS, value
+        )
+    given = fields.get(f"effective_radius_{phase}")
+    if given is not None:
+        value = np.where(given[there] > 0.0, given[there], value)
+    return value
