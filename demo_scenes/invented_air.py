@@ -21,10 +21,12 @@ _TEMPERATURE_K = (
 )
 # ozone mole fraction [1e-6] of the same
 _OZONE_PPM = (
-    (2.8, 4.6, 9.4, 8.0, 5.2, 1.5, 0.50, 0.13, 0.07, 0.055, 0.05, 0.048, 0.045, 0.042, 0.038, 0.032, 0.03, 0.028, 0.028),
-    (2.9, 4.8, 8.6, 7.0, 5.0, 2.0, 0.85, 0.28, 0.13, 0.085, 0.065, 0.056, 0.05, 0.047, 0.043, 0.04, 0.038, 0.035, 0.035),
+    (2.8, 4.6, 9.4, 8.0, 5.2, 1.5, 0.50, 0.13, 0.07, 0.055, 0.05, 0.048, 0.045, 0.042, 0.038, 0.032, 0.03, 0.028,
+     0.028),
+    (2.9, 4.8, 8.6, 7.0, 5.0, 2.0, 0.85, 0.28, 0.13, 0.085, 0.065, 0.056, 0.05, 0.047, 0.043, 0.04, 0.038, 0.035,
+     0.035),
     (3.0, 4.9, 6.6, 5.9, 5.0, 3.6, 2.4, 1.3, 0.75, 0.48, 0.30, 0.15, 0.065, 0.052, 0.046, 0.042, 0.04, 0.038, 0.038),
-)
+)  # fmt: skip
 _STRATOSPHERIC_HUMIDITY = 2.9e-6  # kg/kg, about 4.7 parts per million by volume
 
 
@@ -122,9 +124,9 @@ def dry_slot(longitude, latitude):
 def relative_humidity(longitude, latitude, pressure, surface_pressure):
     """Relative humidity over water [1] away from cloud, in the troposphere."""
     x, y = longitude, latitude
-    moist = (1.0 - step(y + 1.5 * smooth_noise(x, y, wavelength=18.0, seed=46), 11.0, 9.0))
+    moist = 1.0 - step(y + 1.5 * smooth_noise(x, y, wavelength=18.0, seed=46), 11.0, 9.0)
     winter = step(y, 30.0, 10.0)
-    near_front = np.exp(-((front_distance(x, y) + 1.2) / 2.2) ** 2) * winter
+    near_front = np.exp(-(((front_distance(x, y) + 1.2) / 2.2) ** 2)) * winter
     filaments = smooth_noise(*unwound(*warped(x, y, wavelength=8.0, amplitude=0.7, seed=47)), wavelength=11.0, seed=49)
     middle = 0.20 + 0.31 * moist + 0.18 * winter + 0.30 * near_front
     middle = middle * np.exp(0.30 * filaments) * (1.0 - 0.80 * dryness(x, y))

@@ -136,7 +136,7 @@ def ascent(x, y):
     distance, along, radius = _front(x, y)
     east = step(along, LOW_CENTRE[0] + 1.0, 6.0)
     width = 1.15 + 1.5 * east
-    band = np.exp(-np.abs((distance + 0.55 + 0.9 * east) / width) ** 2.6)
+    band = np.exp(-(np.abs((distance + 0.55 + 0.9 * east) / width) ** 2.6))
     ends = step(along, 4.0, 9.0) * (1.0 - step(along, 38.0, 9.0))
     north = 1.0 - 0.45 * step(-radius, -2.2, 1.5)
     rope = smooth_noise(*unwound(x, y), wavelength=5.0, seed=153, octaves=5, persistence=0.65)
@@ -169,10 +169,13 @@ def open_cells(x, y, ground):
     u, v = warped(x, y, wavelength=3.0, amplitude=0.15, seed=161)
     rims = np.clip(1.20 - 1.5 * cells(0.8 * u, v, size=1.7, seed=163), 0.0, 1.0)
     patches = 0.75 + 0.35 * smooth_noise(x, y, wavelength=6.0, seed=165)
-    cold = step(front_distance(x, y), 3.2, 2.4) * step(y, 27.0, 4.0) * (1.0 - ground["land"]) * (1.0 - step(x, 36.0, 3.0))
-    amount = np.clip(rims * cold * patches * (1.0 + 0.3 * smooth_noise(x, y, wavelength=1.4, seed=167, octaves=2)), 0.0, 1.0) * (1.0 - 0.9 * dry_slot(x, y))
+    grain = 1.0 + 0.3 * smooth_noise(x, y, wavelength=1.4, seed=167, octaves=2)
+    cold = step(front_distance(x, y), 3.2, 2.4) * step(y, 27.0, 4.0) * (1.0 - step(x, 36.0, 3.0))
+    cold = cold * (1.0 - ground["land"]) * (1.0 - 0.9 * dry_slot(x, y))
+    amount = np.clip(rims * cold * patches * grain, 0.0, 1.0)
     top = 78000.0 - 18000.0 * amount - 4500.0 * step(y, 37.0, 5.0)
-    return Cloud(0.05 + 0.20 * amount, 0.9 * ramp(amount, 0.10, 0.80), top, np.full_like(x, 92500.0), 0.6, 0.9, 0.02 * amount)
+    base = np.full_like(x, 92500.0)
+    return Cloud(0.05 + 0.20 * amount, 0.9 * ramp(amount, 0.10, 0.80), top, base, 0.6, 0.9, 0.02 * amount)
 
 
 def stratocumulus_area(x, y, ground):

@@ -7,18 +7,16 @@ same weather.
 import sys
 from pathlib import Path
 
+import invented_air as air
+import invented_ground
 import numpy as np
+import xarray as xr
+from invented_clouds import all_clouds, inversion_pressure, stratocumulus_area
+from texture import smooth_noise, step
 
-sys.path.insert(0, str(Path(__file__).parent))
-
-import chansim  # noqa: F401, E402  (before xarray can load ecCodes)
-import invented_air as air  # noqa: E402
-import invented_ground  # noqa: E402
-import xarray as xr  # noqa: E402
-from chansim.constants import STANDARD_GRAVITY  # noqa: E402
-from chansim.scene import humidity, hydrostatic  # noqa: E402
-from invented_clouds import all_clouds, inversion_pressure, stratocumulus_area  # noqa: E402
-from texture import smooth_noise, step  # noqa: E402
+import chansim  # noqa: F401  (before xarray can load ecCodes)
+from chansim.constants import STANDARD_GRAVITY
+from chansim.scene import humidity, hydrostatic
 
 DEMO_FILE = Path(__file__).parents[1] / "chansim" / "data" / "demo_scene.nc"
 VALID_TIME = np.datetime64("2026-01-21T00:00", "ns")
@@ -61,12 +59,12 @@ def describe_ground(x, y, pressure):
     return ground
 
 
-def heights_on_all_levels(pressure, temperature, specific_humidity, surface_pressure, surface_height):
+def heights_on_all_levels(pressure, temperature, specific_humidity, surface_pressure, ground_height):
     """Geopotential heights [m], carried on downward through levels below the ground."""
-    height = hydrostatic.heights_from_surface(pressure, temperature, specific_humidity, surface_pressure, surface_height)
+    height = hydrostatic.heights_from_surface(pressure, temperature, specific_humidity, surface_pressure, ground_height)
     virtual = humidity.virtual_temperature(temperature, specific_humidity)
     for k in range(1, len(height)):
-        from_ground = surface_height - hydrostatic.layer_thickness(pressure[k], surface_pressure, virtual[k])
+        from_ground = ground_height - hydrostatic.layer_thickness(pressure[k], surface_pressure, virtual[k])
         height[k] = np.where(np.isnan(height[k]), from_ground, height[k])
     return height
 
@@ -109,10 +107,10 @@ def surface_fields(x, y, ground, clear_sky):
     free = free_surface_temperature(x, y, ground)
     plateau = invented_ground.plateau(x, y)
     snow, arid = invented_ground.snow_cover(x, y), invented_ground.aridity(x, y)
-    texture = 1.0 + 0.16 * smooth_noise(x, y, wavelength=2.5, seed=201)
-    cooling = (4.5 + 3.0 * arid + 4.0 * snow + 16.0 * plateau) * texture * (0.12 + 0.88 * clear_sky)
+    texture = 1.0 + 0.08 * smooth_noise(x, y, wavelength=2.5, seed=201)
+    cooling = (4.5 + 3.0 * arid + 4.0 * snow + 21.0 * plateau) * texture * (0.12 + 0.88 * clear_sky)
     over_land = free - cooling
-    below_air = (1.6 + 1.5 * arid + 1.8 * snow + 3.5 * plateau) * (0.15 + 0.85 * clear_sky)
+    below_air = (1.6 + 1.5 * arid + 1.8 * snow + 4.5 * plateau) * (0.15 + 0.85 * clear_sky)
     sea = ground["sea_surface_temperature"]
     air_sea = sea - 1.0 + 0.25 * np.clip(free - (sea - 1.0), -10.0, 3.0) * (free < sea)
     land = ground["land"]
@@ -140,7 +138,7 @@ def temperature_field(x, y, pressure, ground, surface, clouds):
     free = free + 6.0 * np.clip(1.4 * deck, 0.0, 1.0) * sinking
     near_ground = surface["air_temperature_2m"]
     excess = np.minimum(near_ground - free_surface_temperature(x, y, ground), 0.0)
-    depth = 2500.0 + 3500.0 * invented_ground.plateau(x, y)
+    depth = 2500.0 + 1500.0 * invented_ground.plateau(x, y)
     cooled = free + excess * np.exp(-np.clip(surface_pressure - pressure, 0.0, None) / depth)
     ratio = np.minimum(pressure / surface_pressure, 1.0)
     # dry adiabatic up to the cloud base, then about moist adiabatic; a trace more stable than either

@@ -3,10 +3,11 @@
 import sys
 from pathlib import Path
 
-import chansim  # noqa: F401
 import numpy as np
 import pytest
 import xarray as xr
+
+import chansim  # noqa: F401
 from chansim.scene.reading import open_scene
 
 ROOT = Path(__file__).parents[1]

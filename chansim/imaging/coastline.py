@@ -69,11 +69,12 @@ def lines_of_land(land_fraction, latitude, longitude):
     from scipy.ndimage import map_coordinates
 
     land = np.ma.masked_invalid(np.asarray(land_fraction, dtype=float))
-    turned = np.unwrap(np.unwrap(np.asarray(longitude, dtype=float), period=360.0, axis=0), period=360.0, axis=1)
+    latitude, longitude = (np.asarray(degrees, dtype=float) for degrees in (latitude, longitude))
+    turned = np.unwrap(np.unwrap(longitude, period=360.0, axis=0), period=360.0, axis=1)
     lines = []
     for column_row in contourpy.contour_generator(z=land).lines(0.5):
         where = column_row.T[::-1]
-        lines.append(np.column_stack([map_coordinates(c, where, order=1) for c in (turned, np.asarray(latitude, float))]))
+        lines.append(np.column_stack([map_coordinates(c, where, order=1) for c in (turned, latitude)]))
     return lines
 
 

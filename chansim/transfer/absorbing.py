@@ -62,7 +62,9 @@ def source_bend(planck_above, planck_below, middle_factor, slope):
     slope : see `density_slope`, of this layer [1]
     """
     convex = 0.5 * (planck_above + planck_below) - math.sqrt(planck_above * planck_below) * middle_factor
-    skew = 0.5 * slope / (1.0 - 0.0625 * slope * slope)
+    half = 0.5 * slope  # tanh(a / 2) where absorption grows as exp(a) through the layer
+    offset = 0.5 * half / (1.0 + math.sqrt(1.0 - half * half))  # 1/2 - fraction of the depth above the middle
+    skew = offset / (0.25 - offset * offset)
     return skew * (planck_below - planck_above) - 4.0 * convex
 
 

@@ -3,7 +3,7 @@
 A column is built top -> surface from the reference atmosphere above the model
 top, the model levels above ground, and the surface. Where a model cell holds
 condensate, its half-level boundaries become levels, so that a cloud fills its
-own cell and no other. Steps larger than `LARGEST_STEP` in ln p are divided.
+own cell and no other. Large steps in ln p are divided.
 """
 
 import math
@@ -13,7 +13,8 @@ from numba import njit
 
 from chansim.constants import AVOGADRO, EARTH_RADIUS, GAS_CONSTANT, MOLAR_MASS_DRY_AIR, STANDARD_GRAVITY, WATER_TO_AIR
 
-LARGEST_STEP = 0.17  # in ln p; what finer levels would change is in docs/solvers.md
+LARGEST_STEP = 0.17  # in ln p above 100 hPa; what finer levels would change is in docs/solvers.md
+LARGEST_STEP_BELOW = 0.12  # where water makes absorption steep
 JOIN_SCALE = 1.2  # in ln p: how fast the reference atmosphere forgets the temperature of the model top
 _STEEPEST_EXTRAPOLATION = 15.0  # K from the lowest valid level to the surface, at most
 _SMALLEST_FRACTION = 1e-12  # mole fraction that stands for none in logarithms
@@ -122,7 +123,8 @@ def _emit(point_p, point_t, point_x, i, pressure, level_p, level_t, level_x, n):
 @njit(cache=True)
 def _divide(point_p, point_t, point_x, i, start, stop, cell, level_p, level_t, level_x, layer_cell, n):
     """Layers from start to stop [Pa] between points i and i + 1; n levels are there, the last at start."""
-    steps = max(1, int(math.ceil(math.log(stop / start) / LARGEST_STEP - 1e-9)))
+    largest = LARGEST_STEP if stop < 1.001e4 else LARGEST_STEP_BELOW
+    steps = max(1, int(math.ceil(math.log(stop / start) / largest - 1e-9)))
     for s in range(1, steps + 1):
         pressure = stop if s == steps else start * (stop / start) ** (s / steps)
         _emit(point_p, point_t, point_x, i, pressure, level_p, level_t, level_x, n)
@@ -240,7 +242,7 @@ def layer_amounts(n, level_p, level_t, level_x, level_z, amount, effective_p, ef
     n : number of levels
     level_p, level_t, level_z : [Pa, K, m]; level_x : (1 + gases, levels) mole fractions, water first
     amount : (3 + gases, layers) result [molecules cm-2]: dry air, water, water x its mole fraction, gases
-    effective_p, effective_t : (2, layers) result: weighted by air and by water [Pa, K]
+    effective_p, effective_t : (2 + gases, layers) result: weighted by air, by water and by each gas [Pa, K]
     """
     gases = level_x.shape[0] - 1
     for j in range(n - 1):
@@ -256,9 +258,13 @@ def layer_amounts(n, level_p, level_t, level_x, level_z, amount, effective_p, ef
         amount[2, j] = per_pascal * _power_integral(p1, p2, x1 * x1, x2 * x2, 0.0)
         for g in range(gases):
             amount[3 + g, j] = per_pascal * _power_integral(p1, p2, level_x[1 + g, j], level_x[1 + g, j + 1], 0.0)
-        effective_p[0, j] = 0.5 * (p1 + p2)
-        effective_p[1, j] = _power_integral(p1, p2, x1, x2, 1.0) / water if water > 0.0 else 0.5 * (p1 + p2)
-        for k in range(2):
+        for k in range(2 + gases):
+            effective_p[k, j] = 0.5 * (p1 + p2)
+            if k > 0:
+                total = amount[1 if k == 1 else 1 + k, j] / per_pascal
+                if total > 0.0:
+                    moment = _power_integral(p1, p2, level_x[k - 1, j], level_x[k - 1, j + 1], 1.0)
+                    effective_p[k, j] = min(max(moment / total, p1), p2)
             w = math.log(effective_p[k, j] / p1) / math.log(p2 / p1)
             effective_t[k, j] = level_t[j] + (level_t[j + 1] - level_t[j]) * w
 

@@ -45,41 +45,46 @@ def table_position(log_first, log_step, size, t_first, t_step, t_size, pressure,
     return ip, it - 1, wp, 0.5 * d * (d - 1.0), 1.0 - d * d, 0.5 * d * (d + 1.0)
 
 
+@njit(cache=True)
+def table_positions(layers, effective_p, effective_t, grid, table, corner, share):
+    """Where every layer lies in the table, for each weighting: corner (weightings, layers, 2), share (.., .., 6)."""
+    log_first, log_step, t_first, t_step = grid
+    for k in range(effective_p.shape[0]):
+        for j in range(layers):
+            ip, it, wp, w0, w1, w2 = table_position(
+                log_first, log_step, table.shape[0], t_first, t_step, table.shape[1], effective_p[k, j], effective_t[k, j]
+            )
+            corner[k, j, 0], corner[k, j, 1] = ip, it
+            share[k, j, 0], share[k, j, 1], share[k, j, 2] = (1.0 - wp) * w0, (1.0 - wp) * w1, (1.0 - wp) * w2
+            share[k, j, 3], share[k, j, 4], share[k, j, 5] = wp * w0, wp * w1, wp * w2
+
+
 @njit(cache=True, fastmath=True)
-def _add_slot(table, slot, position, amount, first, last, tau):
-    """tau[i] += amount x cross-section at the position, for the nodes first..last of one slot."""
-    ip, it, wp, w0, w1, w2 = position
-    a = amount * (1.0 - wp)
-    b = amount * wp
-    c0, c1, c2 = a * w0, a * w1, a * w2
-    d0, d1, d2 = b * w0, b * w1, b * w2
+def _add_slot(table, slot, corner, share, amount, first, last, tau):
+    """tau[i] += amount x cross-section at a position, for the nodes first..last of one slot."""
+    ip, it = corner[0], corner[1]
+    a, b, c = amount * share[0], amount * share[1], amount * share[2]
+    d, e, f = amount * share[3], amount * share[4], amount * share[5]
     for i in range(first, last):
         tau[i - first] += (
-            c0 * table[ip, it, slot, i]
-            + c1 * table[ip, it + 1, slot, i]
-            + c2 * table[ip, it + 2, slot, i]
-            + d0 * table[ip + 1, it, slot, i]
-            + d1 * table[ip + 1, it + 1, slot, i]
-            + d2 * table[ip + 1, it + 2, slot, i]
+            a * table[ip, it, slot, i]
+            + b * table[ip, it + 1, slot, i]
+            + c * table[ip, it + 2, slot, i]
+            + d * table[ip + 1, it, slot, i]
+            + e * table[ip + 1, it + 1, slot, i]
+            + f * table[ip + 1, it + 2, slot, i]
         )
 
 
 @njit(cache=True)
-def gas_optical_depth(layers, amount, effective_p, effective_t, grid, table, first, last, tau):
+def gas_optical_depth(layers, amount, corner, share, table, first, last, tau):
     """Vertical optical depths of the gases: tau (layers, nodes of the channel)."""
-    log_first, log_step, t_first, t_step = grid
-    slots = amount.shape[0]
     for j in range(layers):
-        air = table_position(
-            log_first, log_step, table.shape[0], t_first, t_step, table.shape[1], effective_p[0, j], effective_t[0, j]
-        )
-        water = table_position(
-            log_first, log_step, table.shape[0], t_first, t_step, table.shape[1], effective_p[1, j], effective_t[1, j]
-        )
         tau[j, : last - first] = 0.0
-        for s in range(slots):
+        for s in range(amount.shape[0]):
             if amount[s, j] != 0.0:
-                _add_slot(table, s, water if s == 1 or s == 2 else air, amount[s, j], first, last, tau[j])
+                k = s if s < 2 else s - 1  # slots: air, water, water again, gases; weightings: air, water, gases
+                _add_slot(table, s, corner[k, j], share[k, j], amount[s, j], first, last, tau[j])
         for i in range(last - first):
             tau[j, i] = max(tau[j, i], 0.0)
 
@@ -105,11 +110,8 @@ def source_bends(layers, level_p, level_t, tau, planck_level, wavenumber, first,
         for i in range(last - first):
             slope = 0.0
             if span > 0.0:
-                slope = (
-                    2.0
-                    * thickness
-                    / span
-                    * density_slope(tau[up, i] / thickness_up, tau[j, i] / thickness, tau[down, i] / thickness_down)
+                slope = 2.0 * thickness / span * density_slope(
+                    tau[up, i] / thickness_up, tau[j, i] / thickness, tau[down, i] / thickness_down
                 )
             factor = middle_factor(wavenumber[first + i], level_t[j], level_t[j + 1])
             bend[j, i] = source_bend(planck_level[j, i], planck_level[j + 1, i], factor, min(max(slope, -2.0), 2.0))
@@ -298,11 +300,13 @@ def _one_column(
         cloud_omega,
         cloud_g,
         masks,
-        share,
+        portion,
         slant,
         cell_height,
         mean_profile,
         bend,
+        corner,
+        share,
     ) = work
 
     row = c if pressure.shape[0] > 1 else 0
@@ -335,6 +339,7 @@ def _one_column(
     layers = levels - 1
     hydrostatic_heights(levels, level_p, level_t, level_x, surface_height[c], level_z)
     layer_amounts(levels, level_p, level_t, level_x, level_z, amount, effective_p, effective_t)
+    table_positions(layers, effective_p, effective_t, grid, table, corner, share)
     layer_secants(levels, level_z, surface_height[c], view_cosine[c], secant)
     different = 0
     if any_cloud:
@@ -345,11 +350,11 @@ def _one_column(
             if layer_cell[j] >= 0:
                 cell_height[layer_cell[j]] = level_z[j]
         different = _subcolumn_masks(
-            cloudy.size, fraction[c], cell_height, overlap, decorrelation_length, count, masks, share
+            cloudy.size, fraction[c], cell_height, overlap, decorrelation_length, count, masks, portion
         )
     for channel in range(firsts.size - 1):
         first, last = firsts[channel], firsts[channel + 1]
-        gas_optical_depth(layers, amount, effective_p, effective_t, grid, table, first, last, tau)
+        gas_optical_depth(layers, amount, corner, share, table, first, last, tau)
         level_planck(levels, level_t, wavenumber, first, last, planck_level)
         source_bends(layers, level_p, level_t, tau, planck_level, wavenumber, first, last, bend)
         for i in range(first, last):
@@ -394,15 +399,15 @@ def _one_column(
                         )
                         empty = False
                         for i in range(last - first):
-                            thickness += share[m] * weight[first + i] * cloud_tau[j, i]
+                            thickness += portion[m] * weight[first + i] * cloud_tau[j, i]
                     else:
                         cloud_tau[j, : last - first] = 0.0
                         cloud_omega[j, : last - first] = 0.0
                         cloud_g[j, : last - first] = 0.0
                 if empty:
-                    total += share[m] * clear
+                    total += portion[m] * clear
                     for j in range(levels):
-                        mean_profile[j] += share[m] * profile[j]
+                        mean_profile[j] += portion[m] * profile[j]
                 else:
                     value = _absorbing_cloudy(
                         layers,
@@ -420,9 +425,9 @@ def _one_column(
                         slant,
                         state[3],
                     )
-                    total += share[m] * value
+                    total += portion[m] * value
                     for j in range(levels):
-                        mean_profile[j] += share[m] * state[3, j]
+                        mean_profile[j] += portion[m] * state[3, j]
         results[0, channel, c] = total
         results[1, channel, c] = clear
         results[2, channel, c] = mean_profile[levels - 1]
@@ -432,7 +437,7 @@ def _one_column(
 
 @njit(cache=True)
 def _work_arrays(model_levels, ref_levels, gases, species, nodes, subcolumns):
-    size = 2 * model_levels + ref_levels + 80
+    size = 2 * model_levels + ref_levels + 110
     span = max(size, nodes)
     points = (
         np.empty(model_levels + ref_levels + 2),
@@ -448,8 +453,8 @@ def _work_arrays(model_levels, ref_levels, gases, species, nodes, subcolumns):
         np.empty(size),
         np.empty(size, dtype=np.int64),
         np.empty((3 + gases, size)),
-        np.empty((2, size)),
-        np.empty((2, size)),
+        np.empty((2 + gases, size)),
+        np.empty((2 + gases, size)),
         np.empty(size),
         np.empty((size, nodes)),
         np.empty((size, nodes)),
@@ -468,6 +473,8 @@ def _work_arrays(model_levels, ref_levels, gases, species, nodes, subcolumns):
         np.zeros(model_levels),
         np.empty(size),
         np.empty((size, nodes)),
+        np.empty((2 + gases, size, 2), dtype=np.int64),
+        np.empty((2 + gases, size, 6)),
     )
 
 

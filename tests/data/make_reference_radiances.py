@@ -33,7 +33,7 @@ NAMES = ("afgl_1986-tropical", "afgl_1986-midlatitude_summer", "afgl_1986-midlat
          "mipas_2007-polar_winter", "mipas_2007-tropical")
 GASES = ("h2o", "co2", "o3", "n2o", "ch4", "co")
 ZENITH = np.array([0.0, 40.0, 60.0, 70.0])
-LEVELS = 60
+LEVELS = 68  # 45 above 100 hPa, finer below
 TOP = 6.0  # Pa
 RESPONSES = Path(__file__).parents[2] / "srf" / "tarn"
 CHANNELS = ("sw038", "wv063", "wv069", "wv073", "ir085", "oz097", "ir104", "ir112", "ir123", "co133")
@@ -47,7 +47,7 @@ def column(name):
     p = profile.p.values
     order = np.argsort(p)
     p, t = p[order], profile.t.values[order]
-    level_p = np.geomspace(TOP, p[-1], LEVELS)
+    level_p = np.concatenate([np.geomspace(TOP, 10000.0, 46)[:-1], np.geomspace(10000.0, p[-1], LEVELS - 45)])
     x = np.stack([np.exp(np.interp(np.log(level_p), np.log(p),
                                    np.log(np.maximum(profile[f"x_{gas.upper()}"].values[order], 1e-14))))
                   for gas in GASES])
@@ -60,7 +60,7 @@ def layers(level_p, level_t, level_x):
     z = np.empty(n)
     hydrostatic_heights(n, level_p, level_t, level_x, 0.0, z)
     amount = np.zeros((3 + len(GASES) - 1, n - 1))
-    p, t = np.zeros((2, n - 1)), np.zeros((2, n - 1))
+    p, t = np.zeros((1 + len(GASES), n - 1)), np.zeros((1 + len(GASES), n - 1))
     layer_amounts(n, level_p, level_t, level_x, z, amount, p, t)
     secants = np.zeros((ZENITH.size, n - 1))
     for i, zenith in enumerate(ZENITH):
@@ -76,7 +76,9 @@ def source_bend(density, j, above, below, nu, t_above, t_below):
         slope = 2.0 * slope  # one-sided: the neighbour is one layer away, not two
     slope = np.clip(slope, -2.0, 2.0)
     convex = 0.5 * (above + below) - planck(nu, 0.5 * (t_above + t_below))
-    return 0.5 * slope / (1.0 - slope**2 / 16.0) * (below - above) - 4.0 * convex
+    half = 0.5 * slope
+    offset = 0.5 * half / (1.0 + np.sqrt(1.0 - half**2))
+    return offset / (0.25 - offset**2) * (below - above) - 4.0 * convex
 
 
 def layer_optical_depth(lines, water, pairs, j, start, stop, amount, p, t, points_per_cm, wings):
@@ -85,14 +87,14 @@ def layer_optical_depth(lines, water, pairs, j, start, stop, amount, p, t, point
     for g, gas in enumerate(GASES):
         if not len(lines[gas]):
             continue
-        k = int(gas == "h2o")
-        x = amount[2, j] / amount[1, j] if k else 0.0
+        k = 1 + g  # row 0 is weighted by air, row 1 by water, then the other gases
+        x = amount[2, j] / amount[1, j] if gas == "h2o" else 0.0
         prepared = absorption.PreparedLines(lines[gas], t[k, j])
         sigma = absorption.cross_section(prepared, start, stop, points_per_cm, p[k, j], x, wings)
-        if k:
+        if gas == "h2o":
             foreign, own = continuum.water_continuum_parts(water, p[1, j], t[1, j])
             sigma = sigma + foreign * (1.0 - x) + own * x
-        tau = tau + sigma * (amount[1, j] if k else amount[2 + g, j])
+        tau = tau + sigma * (amount[1, j] if gas == "h2o" else amount[2 + g, j])
     return tau
 
 

@@ -1,0 +1,484 @@
+"""Maps of a simulated picture: one channel, a sheet of channels, the difference of two.
+
+Input is what `chansim.simulate` returns, or a Dataset like it: `brightness_temperature` [K] over
+(channel, y, x) or (channel, cell), coordinates `channel`, `latitude`, `longitude`, `time`, and a CF grid
+mapping where the grid is projected. Nothing is fetched; no window is opened.
+"""
+
+import os
+import tempfile
+from dataclasses import dataclass
+from pathlib import Path
+
+import cartopy.crs as ccrs
+import numpy as np
+from matplotlib.backends.backend_agg import FigureCanvasAgg
+from matplotlib.collections import LineCollection
+from matplotlib.colors import ListedColormap
+from matplotlib.figure import Figure
+from matplotlib.patches import Patch
+from matplotlib.ticker import MaxNLocator
+
+from chansim.channels.imager import unknown_channel
+from chansim.errors import ChansimError, OutputError, SceneError
+from chansim.imaging.coastline import lines_of_land, natural_earth_lines, scale_for
+from chansim.imaging.colours import DIFFERENCE_TABLE, channel_kind, colour_map, temperature_range
+from chansim.imaging.projections import Grid, read_grid, target_projection, to_plane
+from chansim.imaging.raster import Raster, make_raster
+
+CAUTION = "Simulation, not an observation - official warnings come first."
+EXISTING = ("keep", "replace")
+COASTLINES = ("auto", "own", "natural-earth", "none")
+_FREEZING = 273.15  # K
+_COAST_COLOUR = "#e8b400"  # stands out on grey, blue and brown alike
+_MASK_COLOURS = ("#b4b4b4", "#6e6e6e")
+_SPACE_COLOUR = "white"
+_WIDTH = 9.0  # inches
+
+
+@dataclass
+class _Map:
+    """What all maps of one Dataset share."""
+
+    dataset: object
+    field: str
+    grid: Grid
+    projection: ccrs.Projection
+    raster: Raster
+    coast: list
+    coast_note: str
+
+
+def draw_channel(
+    dataset, channel, *, projection="source", colours="auto", limits=None, coastline="auto",
+    field="brightness_temperature",
+):  # fmt: skip
+    """A map of one channel.
+
+    Parameters
+    ----------
+    dataset : result of `chansim.simulate`
+    channel : channel id
+    projection : "source" (that of the model grid), "latlon", or a cartopy projection
+    colours : "auto" (grey, cold white), or a name in `colours.TABLES`
+    limits : (coldest, warmest) of the colours [K]; None is the fixed range of the kind of channel
+    coastline : "auto" follows the attribute `coastline` of the Dataset, else "own" (its land fraction),
+        "natural-earth" or "none"
+    field : variable with brightness temperatures, e.g. "brightness_temperature_clear"
+
+    Returns
+    -------
+    matplotlib.figure.Figure, to be saved with `save_figure`
+
+    Raises
+    ------
+    SceneError : not such a Dataset, or no pixel with a value
+    ResponseError : no such channel
+    ViewError : the projection does not show the data
+    ChansimError : unknown colours or coastline
+    """
+    shared = _prepare(dataset, projection, coastline, field)
+    values = channel_values(dataset, channel, field)
+    limits = limits or temperature_range(_kind(dataset, channel))
+    figure, axes = _figure_with_map(shared)
+    masked = _draw_field(axes, shared, values, colour_map(colours, limits), limits)
+    _draw_coast(axes, shared)
+    _draw_graticule(axes)
+    _draw_scale(figure, axes, values, "brightness temperature [K]", celsius="shown")
+    words = "" if field == "brightness_temperature" else f", {_field_words(dataset, field)}"
+    title = f"{channel_words(dataset, channel)}: simulated brightness temperature{words}"
+    _write_titles(figure, axes, title, dataset)
+    _write_small_print(figure, axes, shared, masked)
+    return figure
+
+
+def draw_difference(dataset, channel_a, channel_b, *, projection="source", limit=None, coastline="auto"):
+    """A map of channel A minus channel B.
+
+    Parameters
+    ----------
+    dataset, projection, coastline : see `draw_channel`
+    channel_a, channel_b : channel ids
+    limit : largest difference of the colours [K]; None fits the data
+
+    Returns
+    -------
+    matplotlib.figure.Figure
+
+    Raises
+    ------
+    see `draw_channel`
+    """
+    shared = _prepare(dataset, projection, coastline, "brightness_temperature")
+    values = channel_values(dataset, channel_a) - channel_values(dataset, channel_b)
+    _require_values(values, f"{channel_a} minus {channel_b}")
+    limit = limit or _round_limit(values)
+    figure, axes = _figure_with_map(shared)
+    masked = _draw_field(axes, shared, values, colour_map(DIFFERENCE_TABLE, (-limit, limit)), (-limit, limit))
+    _draw_coast(axes, shared, colour="#303030")
+    _draw_graticule(axes)
+    _draw_scale(figure, axes, values, f"{channel_a} minus {channel_b} [K]", celsius="left out")
+    first, second = channel_words(dataset, channel_a), channel_words(dataset, channel_b)
+    _write_titles(figure, axes, f"{first} minus {second}: simulated difference", dataset)
+    _write_small_print(figure, axes, shared, masked)
+    return figure
+
+
+def draw_sheet(dataset, channels=None, *, projection="source", colours="auto", coastline="auto", columns=None):
+    """All channels, or some, on one sheet.
+
+    Parameters
+    ----------
+    dataset, projection, colours, coastline : see `draw_channel`
+    channels : channel ids in order; None is all
+    columns : panels side by side; None chooses
+
+    Returns
+    -------
+    matplotlib.figure.Figure
+
+    Raises
+    ------
+    see `draw_channel`
+    """
+    shared = _prepare(dataset, projection, coastline, "brightness_temperature")
+    channels = [str(c) for c in (dataset["channel"].values if channels is None else channels)]
+    if not channels:
+        raise SceneError("cannot draw a sheet of no channels; name at least one")
+    fields = [channel_values(dataset, channel) for channel in channels]
+    figure, boxes = _sheet_layout(len(channels), columns, _aspect(shared))
+    for channel, values, box in zip(channels, fields, boxes):
+        axes = figure.add_axes(box, projection=shared.projection)
+        limits = temperature_range(_kind(dataset, channel))
+        masked = _draw_field(axes, shared, values, colour_map(colours, limits), limits)
+        _draw_coast(axes, shared, width=0.5)
+        axes.set_title(channel_words(dataset, channel), fontsize=9, loc="left", pad=3)
+        _draw_small_scale(figure, axes, values)
+    width, height = figure.get_size_inches()
+    left = _SHEET_GAP / width
+    figure.text(left, 1 - 0.12 / height, "Simulated brightness temperature", ha="left", va="top", fontsize=13)
+    figure.text(left, 1 - 0.44 / height, _subtitle(dataset), ha="left", va="top", fontsize=9)
+    figure.text(left, 0.10 / height, _small_print(shared, masked), ha="left", va="bottom", fontsize=7)
+    return figure
+
+
+_SHEET_GAP = 0.25  # inches between panels and around them
+
+
+def _sheet_layout(count, columns, aspect):
+    """A figure, and one box for each panel, row by row."""
+    columns = columns or int(np.clip(np.ceil(np.sqrt(count * aspect * 1.2)), 1, min(count, 5)))
+    rows = -(-count // columns)
+    panel, above, below, head, foot = 3.6, 0.28, 0.50, 0.75, 0.35  # inches
+    step = (panel + _SHEET_GAP, panel * aspect + above + below)
+    width, height = columns * step[0] + _SHEET_GAP, head + rows * step[1] + foot
+    figure = _new_figure((width, height))
+    boxes = []
+    for number in range(count):
+        left = _SHEET_GAP + (number % columns) * step[0]
+        bottom = height - head - (number // columns) * step[1] - above - panel * aspect
+        boxes.append((left / width, bottom / height, panel / width, panel * aspect / height))
+    return figure, boxes
+
+
+def _draw_small_scale(figure, axes, values):
+    image, box = axes.images[-1], axes.get_position()
+    height = figure.get_size_inches()[1]
+    place = figure.add_axes((box.x0, box.y0 - 0.17 / height, 0.92 * box.width, 0.09 / height))
+    bar = figure.colorbar(image, cax=place, orientation="horizontal", extend=_extend(values, image.get_clim()))
+    bar.ax.xaxis.set_major_locator(MaxNLocator(7))
+    bar.ax.tick_params(labelsize=7, length=2, pad=1)
+    place.text(1.08, 0.5, "K", transform=place.transAxes, fontsize=7, ha="right", va="center")
+
+
+def save_figure(figure, path, *, existing="keep", dpi=130):
+    """Writes a figure, whole or not at all.
+
+    Parameters
+    ----------
+    figure : matplotlib.figure.Figure
+    path : file whose ending names the format (.png, .pdf, .svg, .jpg, ...)
+    existing : "keep" or "replace" a file that is there
+    dpi : dots per inch
+
+    Returns
+    -------
+    pathlib.Path
+
+    Raises
+    ------
+    OutputError : the file exists and is kept, the folder is missing or not writable, unknown format
+    """
+    path = Path(path)
+    _check_target(figure, path, existing)
+    handle, temporary = None, None
+    try:
+        handle, temporary = tempfile.mkstemp(prefix=f".{path.stem}-", suffix=path.suffix, dir=path.parent)
+        os.close(handle)
+        figure.savefig(temporary, dpi=dpi)
+        os.chmod(temporary, 0o666 & ~_umask())
+        os.replace(temporary, path)
+        temporary = None
+    except OSError as error:
+        raise OutputError(f"{path}: cannot be written ({error.strerror or error})") from error
+    finally:
+        if temporary is not None:
+            Path(temporary).unlink(missing_ok=True)
+    return path
+
+
+def _check_target(figure, path, existing):
+    if existing not in EXISTING:
+        raise OutputError(f"existing={existing!r}: use one of {', '.join(EXISTING)}")
+    formats = figure.canvas.get_supported_filetypes()
+    if path.suffix.lower().lstrip(".") not in formats:
+        raise OutputError(f"{path}: the name must end in a picture format, .png for example ({', '.join(formats)})")
+    if path.exists() and existing == "keep":
+        raise OutputError(f"{path}: exists and is kept; choose another name or ask for replacement (--replace)")
+    if not path.parent.is_dir():
+        raise OutputError(f"{path}: the folder {path.parent} does not exist; make it first")
+
+
+def _umask():
+    mask = os.umask(0)
+    os.umask(mask)
+    return mask
+
+
+def channel_values(dataset, channel, field="brightness_temperature"):
+    """One channel as an array (horizontal), checked for having values; SceneError, ResponseError."""
+    _require_result(dataset, field)
+    existing = [str(c) for c in dataset["channel"].values]
+    if str(channel) not in existing:
+        raise unknown_channel(str(channel), dataset.attrs.get("imager", "of this Dataset"), existing)
+    values = dataset[field].isel(channel=existing.index(str(channel)))
+    values = values.values.astype(float)
+    _require_values(values, str(channel))
+    return values
+
+
+def _require_result(dataset, field):
+    if field not in dataset or "channel" not in dataset[field].dims or "channel" not in dataset.coords:
+        raise SceneError(
+            f"cannot draw: no '{field}' over a coordinate 'channel' in the Dataset; give a result of chansim.simulate"
+        )
+    horizontal = [d for d in dataset[field].dims if d != "channel"]
+    if len(horizontal) not in (1, 2):
+        raise SceneError(f"cannot draw: '{field}' lies over {', '.join(map(str, horizontal))}; pick one of them first")
+
+
+def _require_values(values, words):
+    if not np.any(np.isfinite(values)):
+        raise SceneError(
+            f"cannot draw {words}: not one of {values.size} pixels has a value; the columns were all masked or "
+            "out of view, see the attributes 'masked_columns' and 'view' of the Dataset"
+        )
+
+
+def _prepare(dataset, projection, coastline, field):
+    _require_result(dataset, field)
+    grid = read_grid(dataset, field)
+    projection = target_projection(grid, projection)
+    raster = make_raster(grid, projection)
+    lines, note = _coast_lines(dataset, grid, coastline)
+    return _Map(dataset, field, grid, projection, raster, lines, note)
+
+
+def _coast_lines(dataset, grid, coastline):
+    """Lines in degrees, and what they are in words."""
+    if coastline == "auto":
+        coastline = str(dataset.attrs.get("coastline", "")) or "natural-earth"
+    if coastline not in COASTLINES:
+        raise ChansimError(f"coastline {coastline!r}: use one of {', '.join(COASTLINES)}")
+    if coastline == "none":
+        return [], ""
+    if coastline == "natural-earth":
+        return natural_earth_lines(scale_for(_width_degrees(grid))), "Coastline: Natural Earth."
+    if "land_fraction" not in dataset or grid.latitude.ndim != 2:
+        return [], "No coastline: it would be the scene's own, but there is no land_fraction on a grid here."
+    land = dataset["land_fraction"].transpose(*(d for d in dataset["brightness_temperature"].dims if d != "channel"))
+    return lines_of_land(land.values, grid.latitude, grid.longitude), "Coastline: the scene's own land."
+
+
+def _width_degrees(grid):
+    return float(np.ptp(grid.latitude[grid.on_earth]))
+
+
+def _kind(dataset, channel):
+    if "channel_kind" in dataset.coords:
+        return str(dataset["channel_kind"].sel(channel=channel).values)
+    wavelength = _wavelength_um(dataset, channel)
+    return channel_kind(wavelength) if wavelength is not None else "window"
+
+
+def _wavelength_um(dataset, channel):
+    """Central wavelength [um] of a channel, None when the Dataset does not say."""
+    if "central_wavelength_um" in dataset.coords:
+        return float(dataset["central_wavelength_um"].sel(channel=channel))
+    if "central_wavenumber" in dataset.coords:
+        return 1e4 / float(dataset["central_wavenumber"].sel(channel=channel))
+    return None
+
+
+def channel_words(dataset, channel):
+    """A channel for titles: id and central wavelength."""
+    wavelength = _wavelength_um(dataset, channel)
+    return str(channel) if wavelength is None else f"{channel} ({wavelength:.2f} µm)"
+
+
+def _field_words(dataset, field):
+    if field == "brightness_temperature_clear":
+        return "clouds left out"
+    return str(dataset[field].attrs.get("long_name", field))
+
+
+def _new_figure(size):
+    figure = Figure(figsize=size)
+    FigureCanvasAgg(figure)  # the backend a user may have chosen stays as it is
+    return figure
+
+
+def _aspect(shared):
+    """Height over width of the map."""
+    west, east, south, north = shared.raster.extent
+    return float(np.clip((north - south) / (east - west), 0.3, 2.2))
+
+
+def _figure_with_map(shared):
+    aspect = _aspect(shared)
+    width = _WIDTH if aspect <= 1.0 else max(_WIDTH / aspect**0.6, 5.5)
+    map_width = width - 1.1
+    map_height = map_width * aspect
+    height = map_height + 2.25
+    figure = _new_figure((width, height))
+    box = (0.75 / width, 1.45 / height, map_width / width, map_height / height)
+    return figure, figure.add_axes(box, projection=shared.projection)
+
+
+def _draw_field(axes, shared, values, colours, limits):
+    """Draws a field; returns how many pixels on the Earth have no value."""
+    raster = shared.raster
+    picture = raster.sample(values)
+    masked = int(np.count_nonzero(~np.isfinite(values) & shared.grid.on_earth))
+    place = {"extent": raster.extent, "origin": "upper", "interpolation": "nearest"}
+    west, east, south, north = raster.extent
+    axes.set_xlim(west, east)
+    axes.set_ylim(south, north)
+    axes.set_facecolor(_SPACE_COLOUR)
+    if masked:
+        axes.patch.set(facecolor=_MASK_COLOURS[0], edgecolor=_MASK_COLOURS[1], hatch="////", linewidth=0.0)
+        # what the grid does not cover is not masked: it stays plain
+        cover = np.ma.masked_where(~raster.outside, raster.outside.astype(float))
+        _plain_imshow(axes, cover, cmap=ListedColormap([_SPACE_COLOUR]), **place)
+    _plain_imshow(axes, picture, cmap=colours, vmin=limits[0], vmax=limits[1], **place)
+    return masked
+
+
+def _plain_imshow(axes, picture, **options):
+    """Draws a raster that already lies in the projection of the map; cartopy need not look at it again."""
+    from matplotlib.axes import Axes
+
+    return Axes.imshow(axes, picture, aspect=axes.get_aspect(), **options)
+
+
+def _draw_coast(axes, shared, width=0.8, colour=_COAST_COLOUR):
+    """Coastline within the map, cut where the projection is torn."""
+    west, east, south, north = shared.raster.extent
+    if not shared.coast:
+        return
+    counts = np.array([len(line) for line in shared.coast])
+    x, y = to_plane(shared.projection, *np.concatenate(shared.coast).T)
+    size = max(east - west, north - south)
+    starts = np.concatenate([[0], np.cumsum(counts)[:-1]])
+    near = (x > west - size) & (x < east + size) & (y > south - size) & (y < north + size)
+    jump = np.hypot(np.diff(x, prepend=np.nan), np.diff(y, prepend=np.nan)) > 0.25 * size
+    cut = np.zeros(len(x), dtype=bool)
+    cut[starts] = True
+    cut |= jump | ~near | ~np.append(True, near[:-1])
+    pieces = [p for p in np.split(np.column_stack([x, y]), np.flatnonzero(cut)) if len(p) > 1 and np.isfinite(p).all()]
+    axes.add_collection(LineCollection(pieces, colors=colour, linewidths=width, zorder=3), autolim=False)
+
+
+def _draw_graticule(axes):
+    lines = axes.gridlines(draw_labels=True, linewidth=0.4, color="#9a9a9a", alpha=0.6, linestyle=":", zorder=2,
+                           x_inline=False, y_inline=False)  # fmt: skip
+    lines.top_labels = lines.right_labels = False
+    lines.rotate_labels = False
+    lines.xlabel_style = lines.ylabel_style = {"size": 8}
+
+
+def _extend(values, limits):
+    seen = values[np.isfinite(values)]
+    below, above = seen.min() < limits[0], seen.max() > limits[1]
+    return {(False, False): "neither", (True, False): "min", (False, True): "max", (True, True): "both"}[below, above]
+
+
+def _draw_scale(figure, axes, values, label, celsius):
+    """Colour bar under the map: kelvin below, degrees Celsius above it."""
+    image = axes.images[-1]
+    box = axes.get_position()
+    height = figure.get_size_inches()[1]
+    place = figure.add_axes((box.x0 + 0.06 * box.width, 0.80 / height, 0.88 * box.width, 0.16 / height))
+    bar = figure.colorbar(image, cax=place, orientation="horizontal", extend=_extend(values, image.get_clim()))
+    bar.ax.xaxis.set_major_locator(MaxNLocator(10))
+    bar.ax.tick_params(labelsize=8, pad=2)
+    bar.set_label(label, fontsize=9, labelpad=2)
+    if celsius == "shown":
+        second = bar.ax.secondary_xaxis("top", functions=(lambda k: k - _FREEZING, lambda c: c + _FREEZING))
+        second.xaxis.set_major_locator(MaxNLocator(10))
+        second.tick_params(labelsize=8, pad=1)
+        place.text(1.045, 1.7, "°C", transform=place.transAxes, fontsize=8, ha="left", va="center")
+        place.text(1.045, -0.8, "K", transform=place.transAxes, fontsize=8, ha="left", va="center")
+
+
+def _round_limit(values):
+    """A round limit [K] that holds all but one per cent of the differences."""
+    size = np.nanpercentile(np.abs(values), 99.0)
+    return float(next((limit for limit in (1, 2, 3, 5, 10, 15, 20, 30, 50, 100) if size <= limit), 150))
+
+
+def _subtitle(dataset):
+    parts = [f"model: {_model(dataset)}", _valid_time(dataset)]
+    parts += [f"{word}: {dataset.attrs[word]}" for word in ("imager", "view") if dataset.attrs.get(word)]
+    return "   ".join(parts)
+
+
+def _model(dataset):
+    name = str(dataset.attrs.get("model", "")).strip()
+    if name and name != "model not named":
+        return name
+    source = str(dataset.attrs.get("source_file", "")).strip()
+    return f"not named ({Path(source).name})" if source else "not named"
+
+
+def _valid_time(dataset):
+    if "time" not in dataset.coords or dataset["time"].size != 1:
+        return "valid time not given"
+    time = dataset["time"].values.ravel()[0]
+    if not np.issubdtype(np.asarray(time).dtype, np.datetime64) or np.isnat(time):
+        return "valid time not given"
+    return f"valid {np.datetime_as_string(time, unit='m').replace('T', ' ')} UTC"
+
+
+def _write_titles(figure, axes, title, dataset):
+    box = axes.get_position()
+    height = figure.get_size_inches()[1]
+    figure.text(box.x0, box.y1 + 0.36 / height, title, fontsize=11, ha="left", va="bottom", fontweight="bold")
+    figure.text(box.x0, box.y1 + 0.12 / height, _subtitle(dataset), fontsize=8, ha="left", va="bottom")
+
+
+def _small_print(shared, masked):
+    software = str(shared.dataset.attrs.get("software", "")).strip()
+    hidden = f"{masked} pixels without a value are hatched." if masked else ""
+    return "  ".join(part for part in (CAUTION, shared.coast_note, hidden, software) if part)
+
+
+def _write_small_print(figure, axes, shared, masked):
+    width, height = figure.get_size_inches()
+    left = axes.get_position().x0
+    if masked:
+        patch = Patch(facecolor=_MASK_COLOURS[0], edgecolor=_MASK_COLOURS[1], hatch="////",
+                      label=f"no value: {masked} masked pixels")  # fmt: skip
+        figure.legend(handles=[patch], loc="lower right", bbox_to_anchor=(1 - 0.3 / width, 0.06 / height), fontsize=7,
+                      frameon=False, borderaxespad=0.0)  # fmt: skip
+    figure.text(left, 0.12 / height, _small_print(shared, 0), fontsize=7, ha="left", va="bottom")
