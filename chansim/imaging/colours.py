@@ -38,14 +38,14 @@ TABLES = {
         ColourTable(
             "cold-tops",
             "grey; cloud tops below 240 K in blue, below 215 K in brown to yellow",
-            ((None, 96, 30, 100), (207.0, 60, 58, 75), (215.0, 25, 30, 45),
+            ((None, 96, 28, 100), (207.0, 60, 58, 75), (215.0, 25, 30, 45),
              (215.0, 90, 12, 225), (228.0, 55, 40, 270), (240.0, 24, 45, 290),
              (240.0, 86, 0, 0), (None, 4, 0, 0)),
         ),
         ColourTable(
             "dry-to-moist",
             "water vapour: dry brown, moist blue to white",
-            ((None, 98, 2, 250), (220.0, 84, 18, 245), (236.0, 66, 30, 255), (244.0, 54, 4, 255),
+            ((None, 98, 2, 240), (220.0, 80, 20, 247), (236.0, 65, 30, 257), (244.0, 54, 4, 255),
              (246.0, 51, 4, 70), (254.0, 40, 40, 65), (None, 14, 18, 45)),
         ),
         ColourTable(
@@ -102,9 +102,8 @@ def colour_map(colours, limits):
     if not warm > cold:
         raise ChansimError(f"range {cold:g} to {warm:g} K: the second value must be the warmer one")
     middle = cold + (np.arange(_STEPS) + 0.5) / _STEPS * (warm - cold)
-    colour = ListedColormap(np.clip(srgb_from_lab(_interpolated(table, middle, cold, warm)), 0.0, 1.0), table.name)
-    colour.set_bad(alpha=0.0)
-    return colour
+    srgb = np.clip(srgb_from_lab(_interpolated(table, middle, cold, warm)), 0.0, 1.0)
+    return ListedColormap(srgb, table.name).with_extremes(bad=(0.0, 0.0, 0.0, 0.0))
 
 
 def _interpolated(table, temperature, cold, warm):
@@ -114,7 +113,6 @@ def _interpolated(table, temperature, cold, warm):
         places = [None if p is None else p * warm for p in places]
     places = np.array([cold, *places[1:-1], warm], dtype=float)
     values = np.array([stop[1:] for stop in table.stops], dtype=float)
-    # greys take the hue of their neighbours, so that no foreign hue appears on the way
     lab = np.column_stack([values[:, 0], values[:, 1] * np.cos(np.radians(values[:, 2])),
                            values[:, 1] * np.sin(np.radians(values[:, 2]))])  # fmt: skip
     place = np.searchsorted(places[1:-1], temperature, side="right")

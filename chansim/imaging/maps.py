@@ -23,7 +23,7 @@ from chansim.channels.imager import unknown_channel
 from chansim.errors import ChansimError, OutputError, SceneError
 from chansim.imaging.coastline import lines_of_land, natural_earth_lines, scale_for
 from chansim.imaging.colours import DIFFERENCE_TABLE, channel_kind, colour_map, temperature_range
-from chansim.imaging.projections import Grid, read_grid, target_projection, to_plane
+from chansim.imaging.projections import Grid, middle_longitude, read_grid, target_projection, to_plane
 from chansim.imaging.raster import Raster, make_raster
 
 CAUTION = "Simulation, not an observation - official warnings come first."
@@ -83,7 +83,7 @@ def draw_channel(
     figure, axes = _figure_with_map(shared)
     masked = _draw_field(axes, shared, values, colour_map(colours, limits), limits)
     _draw_coast(axes, shared)
-    _draw_graticule(axes)
+    _draw_graticule(axes, shared.grid)
     _draw_scale(figure, axes, values, "brightness temperature [K]", celsius="shown")
     words = "" if field == "brightness_temperature" else f", {_field_words(dataset, field)}"
     title = f"{channel_words(dataset, channel)}: simulated brightness temperature{words}"
@@ -116,7 +116,7 @@ def draw_difference(dataset, channel_a, channel_b, *, projection="source", limit
     figure, axes = _figure_with_map(shared)
     masked = _draw_field(axes, shared, values, colour_map(DIFFERENCE_TABLE, (-limit, limit)), (-limit, limit))
     _draw_coast(axes, shared, colour="#303030")
-    _draw_graticule(axes)
+    _draw_graticule(axes, shared.grid)
     _draw_scale(figure, axes, values, f"{channel_a} minus {channel_b} [K]", celsius="left out")
     first, second = channel_words(dataset, channel_a), channel_words(dataset, channel_b)
     _write_titles(figure, axes, f"{first} minus {second}: simulated difference", dataset)
@@ -146,11 +146,12 @@ def draw_sheet(dataset, channels=None, *, projection="source", colours="auto", c
     if not channels:
         raise SceneError("cannot draw a sheet of no channels; name at least one")
     fields = [channel_values(dataset, channel) for channel in channels]
+    masked = 0
     figure, boxes = _sheet_layout(len(channels), columns, _aspect(shared))
     for channel, values, box in zip(channels, fields, boxes):
         axes = figure.add_axes(box, projection=shared.projection)
         limits = temperature_range(_kind(dataset, channel))
-        masked = _draw_field(axes, shared, values, colour_map(colours, limits), limits)
+        masked = max(masked, _draw_field(axes, shared, values, colour_map(colours, limits), limits))
         _draw_coast(axes, shared, width=0.5)
         axes.set_title(channel_words(dataset, channel), fontsize=9, loc="left", pad=3)
         _draw_small_scale(figure, axes, values)
@@ -341,7 +342,7 @@ def _new_figure(size):
 def _aspect(shared):
     """Height over width of the map."""
     west, east, south, north = shared.raster.extent
-    return float(np.clip((north - south) / (east - west), 0.3, 2.2))
+    return float(np.clip((north - south) / (east - west), 0.15, 2.2))
 
 
 def _figure_with_map(shared):
@@ -399,12 +400,26 @@ def _draw_coast(axes, shared, width=0.8, colour=_COAST_COLOUR):
     axes.add_collection(LineCollection(pieces, colors=colour, linewidths=width, zorder=3), autolim=False)
 
 
-def _draw_graticule(axes):
+def _draw_graticule(axes, grid):
+    """Meridians and parallels at round degrees, labelled on the left and below."""
+    middle = middle_longitude(grid)
+    places = grid.on_earth
+    from_middle = np.mod(grid.longitude[places] - middle + 180.0, 360.0) - 180.0
+    meridians = _round_degrees(middle + from_middle.min(), middle + from_middle.max())
+    meridians = np.unique(np.mod(meridians + 180.0, 360.0) - 180.0)
+    parallels = _round_degrees(grid.latitude[places].min(), grid.latitude[places].max())
     lines = axes.gridlines(draw_labels=True, linewidth=0.4, color="#9a9a9a", alpha=0.6, linestyle=":", zorder=2,
-                           x_inline=False, y_inline=False)  # fmt: skip
+                           x_inline=False, y_inline=False, xlocs=meridians, ylocs=parallels)  # fmt: skip
     lines.top_labels = lines.right_labels = False
     lines.rotate_labels = False
     lines.xlabel_style = lines.ylabel_style = {"size": 8}
+
+
+def _round_degrees(low, high):
+    """About half a dozen round values between two angles [degrees]."""
+    span = max(high - low, 1e-6)
+    step = next((s for s in (0.1, 0.2, 0.5, 1, 2, 5, 10, 15, 20, 30) if span / s <= 7.5), 60)
+    return np.arange(np.ceil(low / step - 1e-6), np.floor(high / step + 1e-6) + 1.0) * step
 
 
 def _extend(values, limits):
