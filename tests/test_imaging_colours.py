@@ -4,7 +4,15 @@ import numpy as np
 import pytest
 
 from chansim.errors import ChansimError
-from chansim.imaging.colours import RANGES, TABLES, channel_kind, colour_map, srgb_from_lab, table_for, temperature_range
+from chansim.imaging.colours import (
+    RANGES,
+    TABLES,
+    channel_kind,
+    colour_map,
+    srgb_from_lab,
+    table_for,
+    temperature_range,
+)
 
 # Machado, Oliveira and Fernandes 2009 (IEEE Trans. Vis. Comput. Graph. 15), severity 1.0, linear RGB
 DEFICIENCIES = {
@@ -38,7 +46,9 @@ def lab_from_srgb(srgb):
 
 
 def lab_from_linear(linear):
-    to_xyz = np.array([[0.4124564, 0.3575761, 0.1804375], [0.2126729, 0.7151522, 0.0721750], [0.0193339, 0.1191920, 0.9503041]])
+    to_xyz = np.array(
+        [[0.4124564, 0.3575761, 0.1804375], [0.2126729, 0.7151522, 0.0721750], [0.0193339, 0.1191920, 0.9503041]]
+    )
     xyz = np.clip(linear, 0.0, 1.0) @ to_xyz.T / np.array([0.95047, 1.0, 1.08883])
     f = np.where(xyz > (6 / 29) ** 3, np.cbrt(xyz), xyz / (3 * (6 / 29) ** 2) + 4 / 29)
     return np.stack([116 * f[:, 1] - 16, 500 * (f[:, 0] - f[:, 1]), 200 * (f[:, 1] - f[:, 2])], axis=1)

@@ -79,6 +79,8 @@ def test_bend_vanishes_without_gradient_and_for_even_absorption():
     middle = absorbing.middle_factor(900.0, 250.0, 252.0)
     assert math.sqrt(b1 * b2) * middle == pytest.approx(planck(900.0, 251.0), rel=1e-6)
     assert absorbing.density_slope(1.0, 1.0, 1.0) == 0.0
+    # absorption that starts within a layer: steep, but finite
+    assert math.isfinite(absorbing.source_bend(b1, b2, middle, absorbing.STEEPEST))
 
 
 def test_secants_over_a_round_earth():

@@ -244,8 +244,19 @@ def _finish(scene, opened, found, plan, grid, notes, tally):
         "adjusted": "\n".join(tally.lines()),
         "software": f"chansim {__version__}",
     }
+    scene.attrs["model"] = _model_name(opened)
+    if opened.dataset is not None and "coastline" in opened.dataset.attrs:
+        scene.attrs["coastline"] = opened.dataset.attrs["coastline"]
     if not scene["column_valid"].chunks:
         scene.attrs["masked_columns"] = int((~scene["column_valid"]).sum())
+
+
+def _model_name(opened):
+    """What the source says of the model that wrote it ("" when it says nothing)."""
+    attributes = opened.dataset.attrs if opened.dataset is not None else opened.fields[0].evidence
+    names = ("model", "model_id", "source_id", "source", "TITLE", "title", "institution")
+    known = next((str(attributes[name]) for name in names if attributes.get(name)), "")
+    return known or (f"GRIB centre {attributes['centre']}" if attributes.get("centre") else "")
 
 
 def _add_coordinates(scene, opened, grid):

@@ -12,6 +12,8 @@ from numba import njit
 
 from chansim.constants import SECOND_RADIATION
 
+STEEPEST = 1.8  # of `density_slope`: absorption that grows twentyfold within a layer is not a smooth profile
+
 
 @njit(cache=True)
 def absorbed_fraction(path):

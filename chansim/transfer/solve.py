@@ -16,6 +16,7 @@ from numba import njit
 from chansim.constants import EARTH_RADIUS, STANDARD_GRAVITY
 from chansim.planck import planck_scalar
 from chansim.transfer.absorbing import (
+    STEEPEST,
     absorbed_fraction,
     absorbing_radiance,
     bend_weight,
@@ -114,7 +115,7 @@ def source_bends(layers, level_p, level_t, tau, planck_level, wavenumber, first,
                     tau[up, i] / thickness_up, tau[j, i] / thickness, tau[down, i] / thickness_down
                 )
             factor = middle_factor(wavenumber[first + i], level_t[j], level_t[j + 1])
-            bend[j, i] = source_bend(planck_level[j, i], planck_level[j + 1, i], factor, min(max(slope, -2.0), 2.0))
+            bend[j, i] = source_bend(planck_level[j, i], planck_level[j + 1, i], factor, min(max(slope, -STEEPEST), STEEPEST))
 
 
 @njit(cache=True)

@@ -74,7 +74,7 @@ def source_bend(density, j, above, below, nu, t_above, t_below):
     slope = 2.0 * (density[2] - density[0]) / np.maximum(density[0] + 2.0 * here + density[2], 1e-300)
     if j in (0, LEVELS - 2):
         slope = 2.0 * slope  # one-sided: the neighbour is one layer away, not two
-    slope = np.clip(slope, -2.0, 2.0)
+    slope = np.clip(slope, -1.8, 1.8)
     convex = 0.5 * (above + below) - planck(nu, 0.5 * (t_above + t_below))
     half = 0.5 * slope
     offset = 0.5 * half / (1.0 + np.sqrt(1.0 - half**2))
