@@ -11,7 +11,7 @@ from chansim._version import __version__
 from chansim.channels.absorption_tables import PRESSURES, TEMPERATURES, absorption_tables
 from chansim.channels.atlas import load_atlas
 from chansim.channels.imager import load_imager
-from chansim.errors import SceneError
+from chansim.errors import SceneError, ViewError
 from chansim.optics.condensate import SPECIES, condensate_optics, effective_radii
 from chansim.optics.surface import channel_emissivity
 from chansim.scene.reading import open_scene
@@ -88,6 +88,8 @@ def simulate(scene, imager="tarn", *, channels=None, view="nadir", settings=None
         scene = open_scene(scene)
     if settings.overlap not in OVERLAPS:
         raise SceneError(f"unknown cloud overlap {settings.overlap!r}; use one of {', '.join(OVERLAPS)}")
+    if settings.subcolumns < 1:
+        raise SceneError(f"subcolumns {settings.subcolumns}: at least 1 is needed (20 is the default)")
     imager = load_imager(imager, channels)
     dims, shape = _horizontal(scene)
     view = as_view(view)
@@ -110,6 +112,12 @@ def simulate(scene, imager="tarn", *, channels=None, view="nadir", settings=None
         zenith[piece] = angles
         if progress is not None:
             progress(piece.stop * int(np.prod(shape[1:])), int(np.prod(shape)))
+    if not (zenith < view.largest_zenith).any():
+        raise ViewError(
+            f"the view ({view.describe()}) sees no column of the scene, which lies at longitudes "
+            f"{float(scene['longitude'].min()):.1f} to {float(scene['longitude'].max()):.1f} degrees east; choose a "
+            "sub-satellite longitude near its middle"
+        )
     return _as_dataset(scene, imager, view, settings, out, zenith, dims, counts, atlas)
 
 

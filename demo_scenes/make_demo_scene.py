@@ -281,6 +281,7 @@ def as_dataset(latitude, longitude, fields, surface):
     scene.attrs = {
         "Conventions": "CF-1.11",
         "title": TITLE,
+        "model": "invented weather",
         "source": "analytic structures and deterministic noise, demo_scenes/make_demo_scene.py",
         "comment": "Values are rounded so that the file is small; humidity and heights fit the rounded temperature.",
         "coastline": "own",

@@ -7,6 +7,7 @@ mapping where the grid is projected. Nothing is fetched; no window is opened.
 
 import os
 import tempfile
+import textwrap
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -34,6 +35,7 @@ _COAST_COLOUR = "#e8b400"  # stands out on grey, blue and brown alike
 _MASK_COLOURS = ("#b4b4b4", "#6e6e6e")
 _SPACE_COLOUR = "white"
 _WIDTH = 9.0  # inches
+_CHARACTERS_PER_INCH = 14.5  # of the small type under the title
 
 
 @dataclass
@@ -158,7 +160,7 @@ def draw_sheet(dataset, channels=None, *, projection="source", colours="auto", c
     width, height = figure.get_size_inches()
     left = _SHEET_GAP / width
     figure.text(left, 1 - 0.12 / height, "Simulated brightness temperature", ha="left", va="top", fontsize=13)
-    figure.text(left, 1 - 0.44 / height, _subtitle(dataset), ha="left", va="top", fontsize=9)
+    figure.text(left, 1 - 0.44 / height, _subtitle(dataset, width), ha="left", va="top", fontsize=9)
     figure.text(left, 0.10 / height, _small_print(shared, masked), ha="left", va="bottom", fontsize=7)
     return figure
 
@@ -350,9 +352,9 @@ def _figure_with_map(shared):
     width = _WIDTH if aspect <= 1.0 else max(_WIDTH / aspect**0.6, 5.5)
     map_width = width - 1.1
     map_height = map_width * aspect
-    height = map_height + 2.25
+    height = map_height + 2.55
     figure = _new_figure((width, height))
-    box = (0.75 / width, 1.45 / height, map_width / width, map_height / height)
+    box = (0.75 / width, 1.60 / height, map_width / width, map_height / height)
     return figure, figure.add_axes(box, projection=shared.projection)
 
 
@@ -408,7 +410,7 @@ def _draw_graticule(axes, grid):
     meridians = _round_degrees(middle + from_middle.min(), middle + from_middle.max())
     meridians = np.unique(np.mod(meridians + 180.0, 360.0) - 180.0)
     parallels = _round_degrees(grid.latitude[places].min(), grid.latitude[places].max())
-    lines = axes.gridlines(draw_labels=True, linewidth=0.4, color="#9a9a9a", alpha=0.6, linestyle=":", zorder=2,
+    lines = axes.gridlines(draw_labels=True, linewidth=0.4, color="#9a9a9a", alpha=0.8, linestyle=":", zorder=2,
                            x_inline=False, y_inline=False, xlocs=meridians, ylocs=parallels)  # fmt: skip
     lines.top_labels = lines.right_labels = False
     lines.rotate_labels = False
@@ -433,7 +435,7 @@ def _draw_scale(figure, axes, values, label, celsius):
     image = axes.images[-1]
     box = axes.get_position()
     height = figure.get_size_inches()[1]
-    place = figure.add_axes((box.x0 + 0.06 * box.width, 0.80 / height, 0.88 * box.width, 0.16 / height))
+    place = figure.add_axes((box.x0 + 0.06 * box.width, 0.95 / height, 0.88 * box.width, 0.16 / height))
     bar = figure.colorbar(image, cax=place, orientation="horizontal", extend=_extend(values, image.get_clim()))
     bar.ax.xaxis.set_major_locator(MaxNLocator(10))
     bar.ax.tick_params(labelsize=8, pad=2)
@@ -452,16 +454,24 @@ def _round_limit(values):
     return float(next((limit for limit in (1, 2, 3, 5, 10, 15, 20, 30, 50, 100) if size <= limit), 150))
 
 
-def _subtitle(dataset):
+def _subtitle(dataset, width):
+    """Model, time, imager and view, on as many lines as a figure of this width [inches] needs."""
     parts = [f"model: {_model(dataset)}", _valid_time(dataset)]
     parts += [f"{word}: {dataset.attrs[word]}" for word in ("imager", "view") if dataset.attrs.get(word)]
-    return "   ".join(parts)
+    lines = [parts[0]]
+    for part in parts[1:]:
+        joined = f"{lines[-1]}   {part}"
+        if len(joined) <= _CHARACTERS_PER_INCH * width:
+            lines[-1] = joined
+        else:
+            lines.append(part)
+    return "\n".join(lines)
 
 
 def _model(dataset):
     name = str(dataset.attrs.get("model", "")).strip()
     if name and name != "model not named":
-        return name
+        return textwrap.shorten(name, 60, placeholder=" ...")
     source = str(dataset.attrs.get("source_file", "")).strip()
     return f"not named ({Path(source).name})" if source else "not named"
 
@@ -477,9 +487,12 @@ def _valid_time(dataset):
 
 def _write_titles(figure, axes, title, dataset):
     box = axes.get_position()
-    height = figure.get_size_inches()[1]
-    figure.text(box.x0, box.y1 + 0.36 / height, title, fontsize=11, ha="left", va="bottom", fontweight="bold")
-    figure.text(box.x0, box.y1 + 0.12 / height, _subtitle(dataset), fontsize=8, ha="left", va="bottom")
+    width, height = figure.get_size_inches()
+    subtitle = _subtitle(dataset, width - 0.9)
+    above = 0.22 + 0.145 * (1 + subtitle.count("\n"))
+    figure.text(box.x0, box.y1 + 0.12 / height, subtitle, fontsize=8, ha="left", va="bottom")
+    size = 11 if width > 7.0 else 9
+    figure.text(box.x0, box.y1 + above / height, title, fontsize=size, ha="left", va="bottom", fontweight="bold")
 
 
 def _small_print(shared, masked):
@@ -490,10 +503,11 @@ def _small_print(shared, masked):
 
 def _write_small_print(figure, axes, shared, masked):
     width, height = figure.get_size_inches()
-    left = axes.get_position().x0
+    lines = textwrap.wrap(_small_print(shared, 0), int(16.5 * (width - 1.0)))
+    figure.text(axes.get_position().x0, 0.10 / height, "\n".join(lines), fontsize=7, ha="left", va="bottom")
     if masked:
         patch = Patch(facecolor=_MASK_COLOURS[0], edgecolor=_MASK_COLOURS[1], hatch="////",
                       label=f"no value: {masked} masked pixels")  # fmt: skip
-        figure.legend(handles=[patch], loc="lower right", bbox_to_anchor=(1 - 0.3 / width, 0.06 / height), fontsize=7,
+        above = (0.15 + 0.12 * len(lines)) / height
+        figure.legend(handles=[patch], loc="lower right", bbox_to_anchor=(1 - 0.3 / width, above), fontsize=7,
                       frameon=False, borderaxespad=0.0)  # fmt: skip
-    figure.text(left, 0.12 / height, _small_print(shared, 0), fontsize=7, ha="left", va="bottom")
