@@ -3,7 +3,6 @@
 import datetime
 from dataclasses import dataclass, field
 
-import numba
 import numpy as np
 import xarray as xr
 
@@ -413,7 +412,7 @@ def _record(scene, imager, view, settings, counts, atlas):
         "software": f"chansim {__version__}",
         "atlas_sha256": atlas.digest,
         "co2_wings": str(atlas.attributes.get("co2_wings", "")),
-        "date_created": datetime.datetime.now(datetime.timezone.utc).strftime("%Y-%m-%dT%H:%M:%SZ"),
+        "date_created": datetime.datetime.now(datetime.UTC).strftime("%Y-%m-%dT%H:%M:%SZ"),
         "cloud_overlap": settings.overlap,
         "subcolumns": settings.subcolumns,
         "decorrelation_length_m": settings.decorrelation_length,

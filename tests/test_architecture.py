@@ -46,6 +46,7 @@ def test_xarray_stays_outside_the_solver():
 def test_top_level_of_the_repository():
     allowed = {"README.md", "DEVELOPERS.md", "pyproject.toml", "chansim", "srf", "tests", "demo_scenes", "docs"}
     import subprocess
+
     listed = subprocess.run(["git", "ls-files"], cwd=ROOT, capture_output=True, text=True)
     if listed.returncode:
         pytest.skip("not a git checkout")

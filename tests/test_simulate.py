@@ -29,8 +29,20 @@ def result(scene, tarn):
 def test_shape_and_record(scene, result):
     assert result.brightness_temperature.dims == ("channel", *scene.column_valid.dims)
     assert result.channel.values.tolist() == TWO
-    for name in ("atlas_sha256", "software", "imager", "view", "defaulted", "recognised", "cloud_overlap", "source_file",
-                 "effective_radius_ice", "summary", "counted", "masked_columns"):
+    for name in (
+        "atlas_sha256",
+        "software",
+        "imager",
+        "view",
+        "defaulted",
+        "recognised",
+        "cloud_overlap",
+        "source_file",
+        "effective_radius_ice",
+        "summary",
+        "counted",
+        "masked_columns",
+    ):
         assert name in result.attrs, name
     assert "not an observation" in result.attrs["summary"]
     assert "ozone_mole_fraction" in result.attrs["defaulted"]
@@ -51,7 +63,9 @@ def test_pieces_do_not_change_the_result(scene, tarn, result, monkeypatch):
     module = importlib.import_module("chansim.simulate")
     monkeypatch.setattr(module, "_COLUMNS_AT_ONCE", 4)
     steps = []
-    again = chansim.simulate(scene, tarn, channels=TWO, progress=lambda done, everything: steps.append((done, everything)))
+    again = chansim.simulate(
+        scene, tarn, channels=TWO, progress=lambda done, everything: steps.append((done, everything))
+    )
     np.testing.assert_array_equal(again.radiance, result.radiance)
     assert len(steps) == 3 and steps[-1][0] == steps[-1][1]
 
@@ -63,7 +77,9 @@ def test_lazy_scene_gives_the_same(tarn, result):
 
 def test_masked_in_masked_out(tarn):
     data = pressure_level_file()
-    name = next(n for n, v in data.data_vars.items() if v.attrs.get("standard_name") == "air_temperature" and v.ndim >= 3)
+    name = next(
+        n for n, v in data.data_vars.items() if v.attrs.get("standard_name") == "air_temperature" and v.ndim >= 3
+    )
     data[name] = data[name].copy(data=data[name].values.copy())
     data[name].values[..., 4, 1, 2] = np.nan
     data[name].values[..., 5, 1, 2] = np.nan
@@ -94,8 +110,17 @@ def test_geostationary_zenith_by_hand():
     assert geostationary_zenith(np.array([0.0]), np.array([140.0]), 40.0)[0] > 90.0
 
 
-@pytest.mark.parametrize("view, words", [("sideways", "nadir"), (89.0, "0 to 85"), (-1.0, "0 to 85"),
-                                         (("geostationary", 999.0), "360"), (xr.Dataset(), "view_zenith_angle"), (None, "nadir")])
+@pytest.mark.parametrize(
+    "view, words",
+    [
+        ("sideways", "nadir"),
+        (89.0, "0 to 85"),
+        (-1.0, "0 to 85"),
+        (("geostationary", 999.0), "360"),
+        (xr.Dataset(), "view_zenith_angle"),
+        (None, "nadir"),
+    ],
+)
 def test_impossible_views(view, words):
     with pytest.raises(ViewError, match=words):
         as_view(view)
@@ -106,16 +131,19 @@ def test_a_satellite_that_sees_nothing(scene, tarn):
         chansim.simulate(scene, tarn, channels=["ir104"], view=("geostationary", 180.0))
 
 
-@pytest.mark.parametrize("options, error, words", [
-    ({"channels": ["ir999"]}, ResponseError, "ir104"),
-    ({"imager": "nobody"}, ResponseError, "tarn"),
-    ({"settings": chansim.Settings(overlap="lucky")}, SceneError, "maximum-random"),
-    ({"settings": chansim.Settings(ice_radius="guess")}, OpticsError, "sun-2001"),
-    ({"settings": chansim.Settings(gases={"xenon": 1e-6})}, SceneError, "co2"),
-    ({"settings": chansim.Settings(subcolumns=0)}, SceneError, "subcolumns"),
-    ({"emissivity": np.full(2, 1.4), "channels": TWO}, SceneError, "within 0 and 1"),
-    ({"emissivity": np.full(3, 0.9), "channels": TWO}, SceneError, "2 channel"),
-])
+@pytest.mark.parametrize(
+    "options, error, words",
+    [
+        ({"channels": ["ir999"]}, ResponseError, "ir104"),
+        ({"imager": "nobody"}, ResponseError, "tarn"),
+        ({"settings": chansim.Settings(overlap="lucky")}, SceneError, "maximum-random"),
+        ({"settings": chansim.Settings(ice_radius="guess")}, OpticsError, "sun-2001"),
+        ({"settings": chansim.Settings(gases={"xenon": 1e-6})}, SceneError, "co2"),
+        ({"settings": chansim.Settings(subcolumns=0)}, SceneError, "subcolumns"),
+        ({"emissivity": np.full(2, 1.4), "channels": TWO}, SceneError, "within 0 and 1"),
+        ({"emissivity": np.full(3, 0.9), "channels": TWO}, SceneError, "2 channel"),
+    ],
+)
 def test_impossible_options(scene, options, error, words):
     options = {"imager": "tarn", **options}
     with pytest.raises(error, match=words):
@@ -171,8 +199,14 @@ def test_real_model_output(tarn):
     # J. Geophys. Res. 98, 16669)
     from metpy.calc import relative_humidity_from_specific_humidity
     from metpy.units import units
-    relative = np.mean([relative_humidity_from_specific_humidity(a * units.Pa, t * units.K, x).magnitude for a, t, x in
-                        zip(p[layer], scene.temperature.values[layer], q[layer])], axis=0)
+
+    relative = np.mean(
+        [
+            relative_humidity_from_specific_humidity(a * units.Pa, t * units.K, x).magnitude
+            for a, t, x in zip(p[layer], scene.temperature.values[layer], q[layer])
+        ],
+        axis=0,
+    )
     assert np.corrcoef(np.log(relative).ravel(), got.sel(channel="wv063").values.ravel())[0, 1] < -0.6
     assert np.corrcoef(scene.air_temperature_2m.values.ravel(), got.sel(channel="ir104").values.ravel())[0, 1] > 0.9
 
@@ -183,8 +217,14 @@ def test_real_radiosonde(tarn):
         pytest.skip("needs ../shared/real_input/radiosonde_20110520_0828z.cdf, which is not part of the repository")
     with xr.open_dataset(path) as sonde:
         scene = chansim.scene_from_profile(
-            sonde["pres"].values, sonde["tdry"].values, dew_point=sonde["dp"].values, latitude=36.6, longitude=-97.5,
-            time="2011-05-20T08:28", units={"pressure": "hPa", "temperature": "degC", "dew_point": "degC"})
+            sonde["pres"].values,
+            sonde["tdry"].values,
+            dew_point=sonde["dp"].values,
+            latitude=36.6,
+            longitude=-97.5,
+            time="2011-05-20T08:28",
+            units={"pressure": "hPa", "temperature": "degC", "dew_point": "degC"},
+        )
     assert "514" in scene.attrs["defaulted"]  # the reference atmosphere above is told
     got = chansim.simulate(scene, tarn)
     bt = {str(c): float(v) for c, v in zip(got.channel.values, got.brightness_temperature.values.ravel())}

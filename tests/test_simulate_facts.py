@@ -21,13 +21,24 @@ def profile(kind="tropical"):
     return at("temperature"), at("water_mole_fraction") * 0.622, at("ozone_mole_fraction")
 
 
-def scene(kind="tropical", *, humidity=None, temperature=None, skin=None, surface=101000.0, land=0.0, latitude=0.0, **more):
+def scene(
+    kind="tropical", *, humidity=None, temperature=None, skin=None, surface=101000.0, land=0.0, latitude=0.0, **more
+):
     t, q, o3 = profile(kind)
     t = t if temperature is None else temperature
     q = q if humidity is None else humidity
     return chansim.scene_from_profile(
-        P, t, specific_humidity=q, ozone_mole_fraction=o3, latitude=latitude, longitude=0.0, surface_pressure=surface,
-        skin_temperature=float(t[-1] + 1.0 if skin is None else skin), land_fraction=land, **more)
+        P,
+        t,
+        specific_humidity=q,
+        ozone_mole_fraction=o3,
+        latitude=latitude,
+        longitude=0.0,
+        surface_pressure=surface,
+        skin_temperature=float(t[-1] + 1.0 if skin is None else skin),
+        land_fraction=land,
+        **more,
+    )
 
 
 def brightness(a_scene, tarn, field="brightness_temperature", **options):
@@ -125,7 +136,9 @@ def test_every_temperature_alike_reads_that_temperature(tarn):
 
 def test_subcolumns_bracket_clear_and_overcast(tarn):
     overcast = brightness(scene(cloud_liquid=layer(840.0, 900.0, 3e-4)), tarn)["ir104"]
-    half = brightness(scene(cloud_liquid=layer(840.0, 900.0, 1.5e-4), cloud_fraction=layer(840.0, 900.0, 0.5)), tarn)["ir104"]
+    half = brightness(scene(cloud_liquid=layer(840.0, 900.0, 1.5e-4), cloud_fraction=layer(840.0, 900.0, 0.5)), tarn)[
+        "ir104"
+    ]
     clear = brightness(scene(), tarn)["ir104"]
     assert overcast < half < clear
     assert half == pytest.approx(0.5 * (overcast + clear), abs=0.5)
@@ -138,6 +151,8 @@ def test_pure_lorentz_wings_make_the_shortwave_window_colder(line_folder):
 
     lines = absorption.lines_acting_on(read_line_list(line_folder / "co2.par"), 2400.0, 2420.0, "lorentz")
     prepared = absorption.PreparedLines(lines, 270.0)
-    mean = {form: absorption.cross_section(prepared, 2400.0, 2420.0, 20, 70000.0, 0.0, form).mean() for form in WING_FORMS}
+    mean = {
+        form: absorption.cross_section(prepared, 2400.0, 2420.0, 20, 70000.0, 0.0, form).mean() for form in WING_FORMS
+    }
     assert mean["lorentz"] > 3.0 * mean["perrin-hartmann"]  # more absorption aloft: emission from colder air
     assert mean["lorentz"] > 3.0 * mean["cousin"]

@@ -1,6 +1,5 @@
 """Reading 160-character line records."""
 
-import numpy as np
 import pytest
 
 from chansim.errors import DataError

@@ -26,9 +26,11 @@ def reference():
 
 def source_integral(tau, near, far, bend=0.0):
     """Emission of a layer toward the near side by numerical quadrature."""
+
     def integrand(t):
         f = t / tau
         return (near + (far - near) * f + bend * f * (1.0 - f)) * math.exp(-t)
+
     return quad(integrand, 0.0, tau, epsabs=0.0, epsrel=1e-12, limit=200)[0]
 
 
@@ -70,7 +72,9 @@ def test_two_layers_and_a_grey_surface_by_hand():
 def test_compiled_and_plain_solver_agree():
     rng = np.random.default_rng(1)
     arguments = (rng.uniform(0, 2, 9), rng.uniform(1, 5, 10), rng.uniform(-0.2, 0.2, 9), 4.0, 0.95)
-    assert absorbing.absorbing_radiance(*arguments) == pytest.approx(absorbing.absorbing_radiance.py_func(*arguments), rel=1e-12)
+    assert absorbing.absorbing_radiance(*arguments) == pytest.approx(
+        absorbing.absorbing_radiance.py_func(*arguments), rel=1e-12
+    )
 
 
 def test_bend_vanishes_without_gradient_and_for_even_absorption():
@@ -95,6 +99,7 @@ def test_secants_over_a_round_earth():
 def test_heights_and_amounts_of_the_standard_atmosphere():
     # US Standard Atmosphere 1976 through the ussa1976 package: pressure at geometric heights
     import ussa1976
+
     z = np.arange(0.0, 30001.0, 500.0)
     standard = ussa1976.compute(z=z, variables=["p", "t"])
     p, t = standard.p.values[::-1].copy(), standard.t.values[::-1].copy()
@@ -121,8 +126,15 @@ def test_atlas_and_nodes_against_line_by_line(tarn, reference):
     skin_excess, emissivity = reference.attrs["skin_excess"], reference.attrs["emissivity"]
     for a in range(reference.sizes["atmosphere"]):
         one = reference.isel(atmosphere=a)
-        got = solve_profile(tarn.channels, one.pressure.values, one.temperature.values, one.mole_fraction.values,
-                            reference.zenith.values, one.temperature.values[-1] + skin_excess, emissivity)
+        got = solve_profile(
+            tarn.channels,
+            one.pressure.values,
+            one.temperature.values,
+            one.mole_fraction.values,
+            reference.zenith.values,
+            one.temperature.values[-1] + skin_excess,
+            emissivity,
+        )
         for c, channel in enumerate(tarn.channels):
             truth = [brightness(channel, r) for r in one.radiance.values[c]]
             errors[a, c] = channel.brightness_temperature(got["radiance"][c]) - truth
@@ -133,8 +145,10 @@ def test_atlas_and_nodes_against_line_by_line(tarn, reference):
     assert np.abs(errors).max() <= 0.15
 
 
-@pytest.mark.parametrize("name", ["tropical", "midlatitude_summer", "midlatitude_winter", "subarctic_summer",
-                                  "subarctic_winter", "us_standard"])
+@pytest.mark.parametrize(
+    "name",
+    ["tropical", "midlatitude_summer", "midlatitude_winter", "subarctic_summer", "subarctic_winter", "us_standard"],
+)
 def test_sixty_levels_against_ten_times_finer_layers(tarn, reference, name):
     one = reference.sel(atmosphere=f"afgl_1986-{name}")
     native = np.log(one.pressure.values)
@@ -147,15 +161,23 @@ def test_sixty_levels_against_ten_times_finer_layers(tarn, reference, name):
     zenith = np.array([0.0, 60.0])
     coarse = solve_profile(tarn.channels, p, t, x, zenith, t[-1] + 1.0)["radiance"]
     truth = solve_profile(tarn.channels, fine, fine_t, fine_x, zenith, t[-1] + 1.0)["radiance"]
-    difference = np.array([c.brightness_temperature(a) - c.brightness_temperature(b)
-                           for c, a, b in zip(tarn.channels, coarse, truth)])
+    difference = np.array(
+        [c.brightness_temperature(a) - c.brightness_temperature(b) for c, a, b in zip(tarn.channels, coarse, truth)]
+    )
     print("\n", name, dict(zip([c.id for c in tarn.channels], np.round(difference, 4).tolist())))
     assert np.abs(difference).max() <= 0.02
 
 
 def test_threads_do_not_change_the_result(tarn, reference):
     one = reference.isel(atmosphere=2)
-    arguments = (tarn.channels[:2], one.pressure.values, one.temperature.values, one.mole_fraction.values,
-                 np.linspace(0.0, 70.0, 37), 280.0)
-    np.testing.assert_array_equal(solve_profile(*arguments, threads=1)["radiance"],
-                                  solve_profile(*arguments, threads=3)["radiance"])
+    arguments = (
+        tarn.channels[:2],
+        one.pressure.values,
+        one.temperature.values,
+        one.mole_fraction.values,
+        np.linspace(0.0, 70.0, 37),
+        280.0,
+    )
+    np.testing.assert_array_equal(
+        solve_profile(*arguments, threads=1)["radiance"], solve_profile(*arguments, threads=3)["radiance"]
+    )

@@ -26,17 +26,39 @@ def solve_profile(channels, pressure, temperature, mole_fraction, zenith, skin, 
 
     q = specific_humidity(mole_fraction[0])
     half = np.concatenate([[0.9 * pressure[0]], np.sqrt(pressure[1:] * pressure[:-1]), [pressure[-1]]])
-    grid = (np.log(PRESSURES[0]), np.log(PRESSURES[1] / PRESSURES[0]), TEMPERATURES[0], TEMPERATURES[1] - TEMPERATURES[0])
+    grid = (
+        np.log(PRESSURES[0]),
+        np.log(PRESSURES[1] / PRESSURES[0]),
+        TEMPERATURES[0],
+        TEMPERATURES[1] - TEMPERATURES[0],
+    )
     nodes = tables.weight.size
     nothing = (np.zeros((0, 3)), *[np.zeros((0, 2, nodes))] * 3)
     results = np.zeros((len(RESULTS), len(channels), n))
     solve_columns(
         np.ones(n, dtype=bool),
-        (pressure[None, :].copy(), columns(temperature), columns(q),
-         np.ascontiguousarray(np.broadcast_to(mole_fraction[1:, None, :], (5, n, levels))), half[None, :]),
-        (np.full(n, pressure[-1]), np.full(n, temperature[-1]), np.full(n, q[-1]), np.full(n, float(skin)), np.zeros(n)),
+        (
+            pressure[None, :].copy(),
+            columns(temperature),
+            columns(q),
+            np.ascontiguousarray(np.broadcast_to(mole_fraction[1:, None, :], (5, n, levels))),
+            half[None, :],
+        ),
+        (
+            np.full(n, pressure[-1]),
+            np.full(n, temperature[-1]),
+            np.full(n, q[-1]),
+            np.full(n, float(skin)),
+            np.zeros(n),
+        ),
         (np.array([1.1, 1.2]) * pressure[0], np.full((n, 2), temperature[0]), np.zeros((6, n, 2))),
         (np.zeros((0, n, levels)), np.zeros((0, n, levels)), np.zeros((n, levels))),
-        nothing, np.cos(np.radians(zenith)), np.full((len(channels), n), emissivity),
-        (tables.table, grid, tables.wavenumber, tables.weight, tables.first), (0, 2000.0, 1), results, threads)
+        nothing,
+        np.cos(np.radians(zenith)),
+        np.full((len(channels), n), emissivity),
+        (tables.table, grid, tables.wavenumber, tables.weight, tables.first),
+        (0, 2000.0, 1),
+        results,
+        threads,
+    )
     return dict(zip(RESULTS, results))

@@ -60,8 +60,11 @@ def choose_nodes(candidates, targets, tolerance, most, rounds=0, least=1):
     return chosen, weights, error
 
 
-def exchange_nodes(candidates, targets, chosen, rounds):
-    """Improve a choice: each node in turn gives way to another column if that does better. Same returns."""
+def exchange_nodes(candidates, targets, chosen, rounds, least_gain=0.02):
+    """Improve a choice: each node in turn gives way to another column if that does better. Same returns.
+
+    It ends after `rounds`, or when a round lowers the squared error by less than `least_gain` of it.
+    """
     chosen = [int(c) for c in chosen]
     weights, error = _solve(candidates[:, chosen], targets)
     for _ in range(rounds):
@@ -75,7 +78,7 @@ def exchange_nodes(candidates, targets, chosen, rounds):
             trial_weights, trial_error = _solve(candidates[:, trial], targets)
             if np.sum(trial_error**2) < np.sum(error**2):
                 chosen, weights, error = trial, trial_weights, trial_error
-        if np.sum(error**2) > 0.98 * before:
+        if np.sum(error**2) > (1.0 - least_gain) * before:
             break
     used = weights.sum(axis=1) > 0
     return np.asarray(chosen)[used], weights[used], error

@@ -8,7 +8,6 @@ own cell and no other. Large steps in ln p are divided.
 
 import math
 
-import numpy as np
 from numba import njit
 
 from chansim.constants import AVOGADRO, EARTH_RADIUS, GAS_CONSTANT, MOLAR_MASS_DRY_AIR, STANDARD_GRAVITY, WATER_TO_AIR

@@ -53,7 +53,14 @@ def table_positions(layers, effective_p, effective_t, grid, table, corner, share
     for k in range(effective_p.shape[0]):
         for j in range(layers):
             ip, it, wp, w0, w1, w2 = table_position(
-                log_first, log_step, table.shape[0], t_first, t_step, table.shape[1], effective_p[k, j], effective_t[k, j]
+                log_first,
+                log_step,
+                table.shape[0],
+                t_first,
+                t_step,
+                table.shape[1],
+                effective_p[k, j],
+                effective_t[k, j],
             )
             corner[k, j, 0], corner[k, j, 1] = ip, it
             share[k, j, 0], share[k, j, 1], share[k, j, 2] = (1.0 - wp) * w0, (1.0 - wp) * w1, (1.0 - wp) * w2
@@ -111,11 +118,16 @@ def source_bends(layers, level_p, level_t, tau, planck_level, wavenumber, first,
         for i in range(last - first):
             slope = 0.0
             if span > 0.0:
-                slope = 2.0 * thickness / span * density_slope(
-                    tau[up, i] / thickness_up, tau[j, i] / thickness, tau[down, i] / thickness_down
+                slope = (
+                    2.0
+                    * thickness
+                    / span
+                    * density_slope(tau[up, i] / thickness_up, tau[j, i] / thickness, tau[down, i] / thickness_down)
                 )
             factor = middle_factor(wavenumber[first + i], level_t[j], level_t[j + 1])
-            bend[j, i] = source_bend(planck_level[j, i], planck_level[j + 1, i], factor, min(max(slope, -STEEPEST), STEEPEST))
+            bend[j, i] = source_bend(
+                planck_level[j, i], planck_level[j + 1, i], factor, min(max(slope, -STEEPEST), STEEPEST)
+            )
 
 
 @njit(cache=True)

@@ -6,10 +6,9 @@ import numpy as np
 import xarray as xr
 
 from chansim.errors import ViewError
+from chansim.view.angles import geostationary_zenith
 
 LARGEST_ZENITH = 85.0  # degrees: beyond, a plane-parallel column says nothing about the slanted path
-GEOSTATIONARY_RADIUS = 42164.0e3  # m from the Earth's centre (CGMS LRIT/HRIT global specification)
-EQUATOR_RADIUS, POLE_RADIUS = 6378.137e3, 6356.7523e3  # m, the ellipsoid of the same specification (GRS80 / WGS84)
 
 
 @dataclass(frozen=True)
@@ -71,25 +70,6 @@ class GivenZenith:
     def describe(self):
         """The view in words."""
         return "zenith angles given for each column"
-
-
-def geostationary_zenith(latitude, longitude, sub_satellite_longitude):
-    """Angle between the ellipsoid normal and the direction to a geostationary satellite.
-
-    latitude (geodetic), longitude : any shape [degrees]; sub_satellite_longitude [degrees_east]
-
-    Returns
-    -------
-    zenith angle [degrees], 0 below the satellite, above 90 where it is not visible
-    """
-    phi, lam = np.radians(latitude), np.radians(np.asarray(longitude) - sub_satellite_longitude)
-    eccentricity = 1.0 - (POLE_RADIUS / EQUATOR_RADIUS) ** 2
-    normal_radius = EQUATOR_RADIUS / np.sqrt(1.0 - eccentricity * np.sin(phi) ** 2)
-    up = np.stack([np.cos(phi) * np.cos(lam), np.cos(phi) * np.sin(lam), np.sin(phi)])
-    place = normal_radius * up * np.array([1.0, 1.0, 1.0 - eccentricity]).reshape(3, *[1] * phi.ndim)
-    toward = np.array([GEOSTATIONARY_RADIUS, 0.0, 0.0]).reshape(3, *[1] * phi.ndim) - place
-    cosine = np.sum(up * toward, axis=0) / np.sqrt(np.sum(toward**2, axis=0))
-    return np.degrees(np.arccos(np.clip(cosine, -1.0, 1.0)))
 
 
 def as_view(view):

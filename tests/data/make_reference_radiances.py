@@ -20,17 +20,25 @@ import numpy as np
 import xarray as xr
 
 import chansim  # noqa: F401
-from chansim.channels.channel import band_average
 from chansim.channels.response import read_response
 from chansim.planck import planck
 from chansim.spectra import absorption, continuum
 from chansim.spectra.atlas import read_sources
 from chansim.transfer.columns import hydrostatic_heights, layer_amounts, layer_secants
 
-NAMES = ("afgl_1986-tropical", "afgl_1986-midlatitude_summer", "afgl_1986-midlatitude_winter",
-         "afgl_1986-subarctic_summer", "afgl_1986-subarctic_winter", "afgl_1986-us_standard",
-         "mipas_2007-midlatitude_day", "mipas_2007-midlatitude_night", "mipas_2007-polar_summer",
-         "mipas_2007-polar_winter", "mipas_2007-tropical")
+NAMES = (
+    "afgl_1986-tropical",
+    "afgl_1986-midlatitude_summer",
+    "afgl_1986-midlatitude_winter",
+    "afgl_1986-subarctic_summer",
+    "afgl_1986-subarctic_winter",
+    "afgl_1986-us_standard",
+    "mipas_2007-midlatitude_day",
+    "mipas_2007-midlatitude_night",
+    "mipas_2007-polar_summer",
+    "mipas_2007-polar_winter",
+    "mipas_2007-tropical",
+)
 GASES = ("h2o", "co2", "o3", "n2o", "ch4", "co")
 ZENITH = np.array([0.0, 40.0, 60.0, 70.0])
 LEVELS = 68  # 45 above 100 hPa, finer below
@@ -43,14 +51,22 @@ SKIN_EXCESS, EMISSIVITY = 1.0, 0.98
 def column(name):
     """Levels of one atmosphere: pressure [Pa], temperature [K], mole fractions (gases, levels)."""
     import joseki
+
     profile = joseki.make(name)
     p = profile.p.values
     order = np.argsort(p)
     p, t = p[order], profile.t.values[order]
     level_p = np.concatenate([np.geomspace(TOP, 10000.0, 46)[:-1], np.geomspace(10000.0, p[-1], LEVELS - 45)])
-    x = np.stack([np.exp(np.interp(np.log(level_p), np.log(p),
-                                   np.log(np.maximum(profile[f"x_{gas.upper()}"].values[order], 1e-14))))
-                  for gas in GASES])
+    x = np.stack(
+        [
+            np.exp(
+                np.interp(
+                    np.log(level_p), np.log(p), np.log(np.maximum(profile[f"x_{gas.upper()}"].values[order], 1e-14))
+                )
+            )
+            for gas in GASES
+        ]
+    )
     return level_p, np.interp(np.log(level_p), np.log(p), t), x
 
 
@@ -103,15 +119,19 @@ def monochromatic(sources, start, stop, level_t, amount, p, t, secants, points_p
     nu = absorption.grid(start, stop, points_per_cm)
     lines = {gas: absorption.lines_acting_on(sources["lines"][gas], start, stop, wings) for gas in GASES}
     water, pairs = sources["continuum"].at(nu), sources["collision"].at(nu)
-    tau = np.stack([layer_optical_depth(lines, water, pairs, j, start, stop, amount, p, t, points_per_cm, wings)
-                    for j in range(amount.shape[1])])
+    tau = np.stack(
+        [
+            layer_optical_depth(lines, water, pairs, j, start, stop, amount, p, t, points_per_cm, wings)
+            for j in range(amount.shape[1])
+        ]
+    )
     up, down = np.zeros((2, ZENITH.size, nu.size))
     through = np.ones((ZENITH.size, nu.size))
     last = amount.shape[1] - 1
     for j in range(last + 1):
         above, below = planck(nu, level_t[j]), planck(nu, level_t[j + 1])
         bend = source_bend(tau[[max(j - 1, 0), j, min(j + 1, last)]], j, above, below, nu, level_t[j], level_t[j + 1])
-        path = tau[j] * secants[:, j:j + 1]
+        path = tau[j] * secants[:, j : j + 1]
         absorbed = -np.expm1(-path)
         safe = np.maximum(path, 1e-3)
         far = np.where(path < 1e-3, 0.5 - path / 12.0, 1.0 / safe + 1.0 / np.expm1(-safe) + 1.0)
@@ -128,8 +148,10 @@ def channel_radiances(sources, name, channel, points_per_cm=240, wings=absorptio
     response = read_response(RESPONSES / f"{channel}.txt")
     low, high = response.wavenumber[[0, -1]]
     level_p, level_t, level_x = column(name)
-    parts = [monochromatic(sources, start, start + 2.5, level_t, *layers(level_p, level_t, level_x), points_per_cm, wings)
-             for start in np.arange(np.floor(low / 2.5) * 2.5, high, 2.5)]
+    parts = [
+        monochromatic(sources, start, start + 2.5, level_t, *layers(level_p, level_t, level_x), points_per_cm, wings)
+        for start in np.arange(np.floor(low / 2.5) * 2.5, high, 2.5)
+    ]
     nu = np.concatenate([part[0] for part in parts])
     radiance = np.concatenate([part[1] for part in parts], axis=1)
     r = np.interp(nu, response.wavenumber, response.response, left=0.0, right=0.0)
@@ -145,28 +167,36 @@ def _task(folder, name, channel, path):
 def main():
     """Command line."""
     from tqdm import tqdm
+
     parser = argparse.ArgumentParser(description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter)
     parser.add_argument("folder")
     options = parser.parse_args()
     work = Path(tempfile.gettempdir()) / "chansim-reference-radiances"
     work.mkdir(exist_ok=True)
-    tasks = [(options.folder, name, channel, str(work / f"{name}-{channel}.npy"))
-             for channel in CHANNELS for name in NAMES]
+    tasks = [
+        (options.folder, name, channel, str(work / f"{name}-{channel}.npy")) for channel in CHANNELS for name in NAMES
+    ]
     with concurrent.futures.ProcessPoolExecutor(2, multiprocessing.get_context("spawn")) as pool:
         pending = [pool.submit(_task, *task) for task in tasks]
         for done in tqdm(concurrent.futures.as_completed(pending), total=len(pending)):
             done.result()
     radiance = np.array([[np.load(work / f"{name}-{channel}.npy") for channel in CHANNELS] for name in NAMES])
     columns = [column(name) for name in NAMES]
-    xr.Dataset({
-        "pressure": (("atmosphere", "level"), np.stack([c[0] for c in columns]), {"units": "Pa"}),
-        "temperature": (("atmosphere", "level"), np.stack([c[1] for c in columns]), {"units": "K"}),
-        "mole_fraction": (("atmosphere", "gas", "level"), np.stack([c[2] for c in columns]), {"units": "1"}),
-        "radiance": (("atmosphere", "channel", "zenith"), radiance, {"units": "mW m-2 sr-1 (cm-1)-1"}),
-    }, coords={"atmosphere": list(NAMES), "channel": list(CHANNELS), "gas": list(GASES), "zenith": ZENITH}, attrs={
-        "skin_excess": SKIN_EXCESS, "emissivity": EMISSIVITY, "recipe": "tests/data/make_reference_radiances.py",
-        "source": "AFGL 1986 (Anderson et al., AFGL-TR-86-0110) and MIPAS 2007 (Remedios et al.) profiles through joseki",
-    }).to_netcdf(Path(__file__).parent / "reference_radiances.nc", engine="netcdf4")
+    xr.Dataset(
+        {
+            "pressure": (("atmosphere", "level"), np.stack([c[0] for c in columns]), {"units": "Pa"}),
+            "temperature": (("atmosphere", "level"), np.stack([c[1] for c in columns]), {"units": "K"}),
+            "mole_fraction": (("atmosphere", "gas", "level"), np.stack([c[2] for c in columns]), {"units": "1"}),
+            "radiance": (("atmosphere", "channel", "zenith"), radiance, {"units": "mW m-2 sr-1 (cm-1)-1"}),
+        },
+        coords={"atmosphere": list(NAMES), "channel": list(CHANNELS), "gas": list(GASES), "zenith": ZENITH},
+        attrs={
+            "skin_excess": SKIN_EXCESS,
+            "emissivity": EMISSIVITY,
+            "recipe": "tests/data/make_reference_radiances.py",
+            "source": "AFGL 1986 (Anderson et al., AFGL-TR-86-0110) and MIPAS 2007 (Remedios et al.) profiles through joseki",
+        },
+    ).to_netcdf(Path(__file__).parent / "reference_radiances.nc", engine="netcdf4")
 
 
 if __name__ == "__main__":
