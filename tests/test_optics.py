@@ -19,7 +19,7 @@ HALE_QUERRY = [
     (12.0, 1.111, 0.199),
 ]
 # Warren & Brandt 2008, J. Geophys. Res. 113, D14220: ice, from memory
-WARREN_BRANDT = [(3.775, 1.39, 0.007), (11.0, 1.09, 0.248), (12.0, 1.24, 0.40)]
+WARREN_BRANDT = [(3.775, 1.39, 0.007), (11.0, 1.09, 0.248)]
 
 
 @pytest.mark.parametrize("material, rows", [("water", HALE_QUERRY), ("ice", WARREN_BRANDT)])

@@ -687,3 +687,19 @@ def test_description(source, tmp_path):
         assert piece in text
     bad = with_units(source, "T", "K", 1.0, -273.15)
     assert "degC called K" in describe_scene(bad)
+
+
+def test_a_scalar_height_belongs_to_its_own_field_only(tmp_path):
+    """CF: `height` of a 2 m field is a scalar coordinate of that field; the surface pressure beside it has none."""
+    data = pressure_level_file()
+    surface = data["PS"]
+    near = (surface * 0.0 + 281.5).assign_attrs(standard_name="air_temperature", units="K")
+    data = data.assign(tas=near).assign_coords(height=((), 2.0, {"standard_name": "height", "units": "m"}))
+    data["tas"].encoding["coordinates"] = "height"
+    for name in data.data_vars:
+        if name != "tas":
+            data[name].encoding["coordinates"] = "time"
+    data.to_netcdf(tmp_path / "scalar.nc")
+    scene = open_scene(tmp_path / "scalar.nc")
+    assert any(line.startswith("surface_pressure <-") for line in scene.attrs["recognised"])
+    assert any(line.startswith("air_temperature_2m <-") for line in scene.attrs["recognised"])

@@ -187,7 +187,7 @@ def test_a_failed_write_leaves_nothing(tmp_path, result):
 
 
 def test_real_model_output(tarn):
-    """The moist and dry bands of the water-vapour channel follow the file's own humidity, the window its 2 m temperature."""
+    """The water-vapour channel follows the file's own humidity, the window its 2 m temperature."""
     path = SHARED / "nam_20180917_00z.grib2"
     if not path.exists():
         pytest.skip("needs ../shared/real_input/nam_20180917_00z.grib2, which is not part of the repository")

@@ -121,7 +121,7 @@ def brightness(channel, radiance):
 
 
 def test_atlas_and_nodes_against_line_by_line(tarn, reference):
-    """AFGL 1986 and MIPAS 2007 atmospheres, none of them used in training; recipe: tests/data/make_reference_radiances.py."""
+    """AFGL 1986 and MIPAS 2007, not used in training; recipe: tests/data/make_reference_radiances.py."""
     errors = np.zeros(reference["radiance"].shape)
     skin_excess, emissivity = reference.attrs["skin_excess"], reference.attrs["emissivity"]
     for a in range(reference.sizes["atmosphere"]):

@@ -35,7 +35,7 @@ _FIT_TEMPERATURES = np.arange(180.0, 341.0, 2.0)  # K, range of the band-correct
 _IMPORTANCE = np.array([1.0, 0.5, 0.35])  # of clear, reflecting and cloud-top scenes
 _BLACK_TEMPERATURES = np.linspace(185.0, 335.0, 16)  # K
 _BLACK_IMPORTANCE = 4.0  # against a training scene
-_RECIPE = "21"  # raise when preparation changes, so that old cache files are not used
+_RECIPE = "1"  # raise when the way of preparing changes, so that old cache files are not used
 
 
 @dataclass(frozen=True)
@@ -144,10 +144,13 @@ def ramp_projection(wavenumber, response, knots):
     nu, r = _refined(wavenumber, response, step / 40.0)
     position = (nu - knots[0]) / step
     load = np.array([np.trapezoid(r * np.maximum(1.0 - np.abs(position - k), 0.0), nu) for k in range(knots.size)])
-    bands = np.zeros((2, knots.size))
+    near = np.flatnonzero(load > 0.0)  # knots beyond the response stay at zero
+    near = np.arange(near[0], near[-1] + 1)
+    bands = np.zeros((2, near.size))
     bands[1], bands[0, 1:] = 2.0 * step / 3.0, step / 6.0
-    bands[1, [0, -1]] = step / 3.0
-    values = np.maximum(solveh_banded(bands, load), 0.0)
+    bands[1, (near == 0) | (near == knots.size - 1)] = step / 3.0
+    values = np.zeros(knots.size)
+    values[near] = np.maximum(solveh_banded(bands, load[near]), 0.0)
     integral = step * (values.sum() - 0.5 * (values[0] + values[-1]))
     return values * np.trapezoid(r, nu) / integral
 
@@ -278,7 +281,16 @@ def _cache_path(response, channel_id, name, atlas):
     digest = hashlib.sha256()
     for part in (response.wavenumber, response.response):
         digest.update(np.ascontiguousarray(part).tobytes())
-    digest.update(repr((channel_id, name, response.notes, atlas.digest, __version__, _RECIPE)).encode())
+    settings = (
+        TOLERANCE,
+        MOST_NODES,
+        LEAST_NODES,
+        TRAINING_COLUMNS,
+        TRAINING_SEED,
+        _IMPORTANCE.tolist(),
+        _BLACK_IMPORTANCE,
+    )
+    digest.update(repr((channel_id, name, response.notes, atlas.digest, __version__, _RECIPE, settings)).encode())
     return cache_folder() / f"{digest.hexdigest()[:32]}.npz"
 
 

@@ -315,7 +315,7 @@ def _dataset_field(data, dataset, horizontal):
     elif levels:
         place, level_dim = "levels", levels[0]
     else:
-        place, level_dim = _single_place(data), ""
+        place, level_dim = _single_place(_with_own_coordinates(data, dataset)), ""
     evidence = {key: attrs[key] for key in ("standard_name", "long_name", "units") if key in attrs}
     evidence["short_name"] = attrs.get("GRIB_shortName", str(data.name))
     if "GRIB_paramId" in attrs:
@@ -323,6 +323,14 @@ def _dataset_field(data, dataset, horizontal):
     if "time: " in (methods := str(attrs.get("cell_methods", ""))) and "time: point" not in methods:
         evidence["over_time"] = methods
     return Field(str(data.name), lambda: data, place, level_dim, evidence)
+
+
+def _with_own_coordinates(data, dataset):
+    """The field without scalar coordinates that the file gives to other fields only (xarray hands them to all)."""
+    named = {name: str(v.encoding.get("coordinates", "")).split() for name, v in dataset.variables.items()}
+    claimed = {coordinate for names in named.values() for coordinate in names}
+    foreign = claimed - set(named.get(data.name, ()))
+    return data.drop_vars([c for c in foreign if c in data.coords and data.coords[c].ndim == 0])
 
 
 def _single_place(data):

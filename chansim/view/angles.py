@@ -10,6 +10,7 @@ from chansim.errors import ViewError
 
 GEOSTATIONARY_RADIUS = 42164.0e3  # m from the Earth's centre (CGMS LRIT/HRIT global specification)
 EQUATOR_RADIUS, POLE_RADIUS = 6378.137e3, 6356.7523e3  # m, the ellipsoid of the same specification (GRS80 / WGS84)
+LARGEST_ZENITH = 85.0  # degrees: beyond, a plane-parallel column says nothing about the slanted path
 _SAMPLE = 4000  # places that are enough to say which longitudes see them
 
 

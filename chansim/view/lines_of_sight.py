@@ -6,9 +6,7 @@ import numpy as np
 import xarray as xr
 
 from chansim.errors import ViewError
-from chansim.view.angles import geostationary_zenith
-
-LARGEST_ZENITH = 85.0  # degrees: beyond, a plane-parallel column says nothing about the slanted path
+from chansim.view.angles import LARGEST_ZENITH, geostationary_zenith
 
 
 @dataclass(frozen=True)

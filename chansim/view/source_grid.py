@@ -156,7 +156,7 @@ class Cells:
         places = _on_sphere(latitude, longitude)
         known = np.isfinite(places).all(axis=-1)
         distance, nearest = self._tree.query(np.where(known[..., None], places, self._points[0]))
-        return nearest.astype(float), np.zeros(nearest.shape), known & (distance <= self._reach[nearest])
+        return np.asarray(nearest, dtype=float), np.zeros(np.shape(nearest)), known & (distance <= self._reach[nearest])
 
 
 def _position(axis, values):
