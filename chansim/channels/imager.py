@@ -54,7 +54,10 @@ def built_in_imagers():
 
 
 def _built_in_folder():
-    return Path(str(importlib.resources.files("chansim.srf")))
+    try:
+        return Path(str(importlib.resources.files("chansim.srf")))
+    except ModuleNotFoundError:  # the source tree, where they lie beside the package
+        return Path(__file__).parents[2] / "srf"
 
 
 def load_imager(source="tarn", channels=None):

@@ -246,7 +246,7 @@ class _Part:
         chosen = {d: s for d, s in zip(dims, self.slices)}
         # a scene that is in memory already is not copied
         self.scene = scene.isel(chosen).load()
-        self._heights = None
+        self._heights, self._arrays = None, {}
 
     def _extent(self, where, rays):
         rows, columns = where.shape
@@ -270,25 +270,24 @@ class _Part:
         return row, column
 
     def field(self, name, level=None):
-        """One field (row, column); `level` counts along the other dimension."""
-        variable = self.scene[name]
-        extra = [d for d in variable.dims if d not in self.dims]
-        if extra and level is not None:
-            variable = variable.isel({extra[0]: level})
-        if set(self.dims) <= set(variable.dims):
-            return _two_dimensional(variable.transpose(*self.dims).values)
-        return variable.values
+        """One field (row, column); `level` counts along the other dimension. 1-D fields: a number, or the whole."""
+        if name not in self._arrays:
+            variable = self.scene[name].variable
+            if set(self.dims) <= set(variable.dims):
+                variable = variable.transpose(..., *self.dims)
+                values = variable.values
+                self._arrays[name] = values if len(self.dims) == 2 else values[..., None]
+            else:
+                self._arrays[name] = variable.values
+        values = self._arrays[name]
+        return values if level is None else values[level]
 
     def height(self, level):
         """Height of a level (row, column) [m]."""
         if self._heights is None:
-            heights = scene_heights(self.scene)
-            self._heights = heights.transpose("level", *self.dims).values
-        return _two_dimensional(self._heights[level])
-
-
-def _two_dimensional(values):
-    return values if values.ndim == 2 else values[:, None]
+            heights = scene_heights(self.scene).transpose("level", *self.dims).values
+            self._heights = heights if len(self.dims) == 2 else heights[..., None]
+        return self._heights[level]
 
 
 class _Trace:
