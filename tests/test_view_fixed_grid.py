@@ -196,3 +196,14 @@ def test_grid_of_file(units):
     assert (again.longitude, again.sweep, again.orbit_radius) == (-75.0, "x", grid.orbit_radius)
     with pytest.raises(ViewError, match="geostationary"):
         grid_of_file(xr.Dataset())
+
+
+def test_finer():
+    """Sub-pixels of a pixel have its centre as their mean; those of the finer full disk are the same."""
+    grid = full_disk(0.0, 90e3)
+    fine = grid.finer(3)
+    np.testing.assert_allclose(fine.x.reshape(-1, 3).mean(axis=1), grid.x)
+    np.testing.assert_allclose(fine.y.reshape(-1, 3)[:, 1], grid.y)
+    np.testing.assert_allclose(np.diff(fine.x), (grid.x[1] - grid.x[0]) / 3.0)
+    with pytest.raises(ViewError, match="whole number"):
+        grid.finer(1.5)

@@ -10,9 +10,9 @@ from view_samples import HEIGHT, PRESSURE, places_in, scene_on
 from chansim.errors import ViewError
 from chansim.scene.hydrostatic import scene_heights
 from chansim.view.angles import EQUATOR_RADIUS, POLE_RADIUS, geostationary_angles
-from chansim.view.fixed_grid import sector
+from chansim.view.fixed_grid import full_disk, sector
 from chansim.view.ray import parallax_distance, ray_places
-from chansim.view.slant import interpolate, scene_on_pixels
+from chansim.view.slant import interpolate, scene_on_grid, scene_on_pixels
 
 GEOD = pyproj.Geod(a=EQUATOR_RADIUS, b=POLE_RADIUS)
 TEN_KM = int(np.flatnonzero(HEIGHT == 10e3)[0])
@@ -103,7 +103,9 @@ def test_vertical_takes_the_column_below():
     np.testing.assert_allclose(latitude[0], np.rint(PIXELS[0] * 4) / 4, atol=1e-9)
     np.testing.assert_allclose(longitude[0], np.rint(PIXELS[1] * 4) / 4, atol=1e-9)
     same = scene_on_pixels(scene, *PIXELS, 0.0, 0.0)  # straight down
-    xr.testing.assert_equal(same.drop_attrs(), found.drop_attrs())
+    angles = ["view_zenith_angle", "view_azimuth_angle"]
+    np.testing.assert_allclose(found[angles[0]], DIRECTIONS[0])
+    xr.testing.assert_equal(same.drop_vars(angles).drop_attrs(), found.drop_vars(angles).drop_attrs())
 
 
 def test_global_grid_across_the_date_line():
@@ -218,6 +220,11 @@ def test_pixels_of_a_fixed_grid():
     np.testing.assert_array_equal(found["x"], grid.x)
     assert found["x"].attrs["standard_name"] == "projection_x_angular_coordinate"
     assert "grid_mapping" not in found and "grid_mapping" not in found["temperature"].attrs
+    same = scene_on_grid(scene_on(), grid)
+    assert same["grid_mapping"].attrs["grid_mapping_name"] == "geostationary"
+    assert same["temperature"].attrs["grid_mapping"] == "grid_mapping"
+    np.testing.assert_array_equal(same["temperature"], found["temperature"])
+    np.testing.assert_array_equal(same["view_zenith_angle"], pixels["view_zenith_angle"])
     one = scene_on_pixels(scene_on(), np.array([50.0, 51.0]), np.array([9.0, 10.0]), 10.0, 180.0)
     assert one["column_valid"].dims == ("pixel",)
 
@@ -254,6 +261,8 @@ def test_bad_input():
         scene_on_pixels(scene, [[np.nan]], [[100.0]], 0.0, 0.0)
     with pytest.raises(ViewError, match="shape"):
         scene_on_pixels(scene, [[50.0]], [[10.0, 11.0]], 0.0, 0.0)
+    with pytest.raises(ViewError, match="sub-satellite longitudes from .* degrees east the most"):
+        scene_on_grid(scene, full_disk(170.0, 100e3))
     with pytest.raises(ViewError, match="cells"):
         slanted(scene_on("cells"), interpolation="bilinear")
 

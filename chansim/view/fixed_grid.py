@@ -5,6 +5,7 @@ sweeps about the y axis; the other sweep axis after the GOES-R product definitio
 section 5.1.2.8. Scan angles follow CF: x to the east, y to the north, 0 below the satellite [rad].
 """
 
+import dataclasses
 import math
 from dataclasses import dataclass, field
 
@@ -174,6 +175,19 @@ class FixedGrid:
             "crs_wkt": self.crs().to_wkt(),
         }
         return xr.DataArray(np.int32(0), attrs=attributes)
+
+    def finer(self, factor):
+        """The grid whose pixels divide each of these into factor x factor; for averaging over the footprint.
+
+        factor : whole number from 1; ViewError for others
+        """
+        if int(factor) != factor or factor < 1:
+            raise ViewError(f"factor {factor}: give a whole number of sub-pixels along each side")
+        if min(self.shape) < 2:
+            raise ViewError("a single row or column of pixels has no known step to divide")
+        offsets = (np.arange(int(factor)) - (factor - 1) / 2.0) / factor
+        axes = [(v[:, None] + self._step(n) * offsets).ravel() for n, v in (("x", self.x), ("y", self.y))]
+        return dataclasses.replace(self, x=axes[0], y=axes[1])
 
     def describe(self):
         """The grid in words."""

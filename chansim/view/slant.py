@@ -6,8 +6,8 @@ surface of a model level, the values of that level are taken, so that high cloud
 """
 
 import functools
+import uuid
 
-import dask
 import dask.array
 import numpy as np
 import xarray as xr
@@ -16,7 +16,7 @@ from numba import njit
 from chansim.errors import ViewError
 from chansim.scene.hydrostatic import scene_heights
 from chansim.scene.variables import VARIABLES
-from chansim.view.angles import LARGEST_ZENITH
+from chansim.view.angles import LARGEST_ZENITH, in_words
 from chansim.view.ray import follow_rays
 from chansim.view.source_grid import locator
 
@@ -35,7 +35,16 @@ _MARGIN = 2  # columns around what a block of pixels sees
 
 
 def scene_on_pixels(
-    scene, latitude, longitude, zenith, azimuth, *, method="slanted", interpolation="nearest", lazy="auto"
+    scene,
+    latitude,
+    longitude,
+    zenith,
+    azimuth,
+    *,
+    method="slanted",
+    interpolation="nearest",
+    grid_mapping=None,
+    lazy="auto",
 ):
     """A canonical scene on the pixels of an imager.
 
@@ -49,6 +58,7 @@ def scene_on_pixels(
     method : "slanted" follows the ray; "vertical" takes the column that stands over the pixel
     interpolation : "nearest" column of the model, or "bilinear" between four (not for lists of cells). Cloud
         that is interpolated gets thinner and wider
+    grid_mapping : CF grid mapping variable of the pixels, when they have one
     lazy : "auto" computes a result of less than 1 GB at once and leaves a larger one lazy, in pieces of rows;
         "always", "never"
 
@@ -57,7 +67,8 @@ def scene_on_pixels(
     xarray.Dataset, a canonical scene over (level, pixel dimensions): dimensions, coordinates and names of
     `latitude` when it is a DataArray, else (y, x) or (pixel). `column_valid` is False for space, outside the
     model's domain (also where the ray leaves it below 20 km), from zenith 85 degrees on, and where the
-    model columns are not valid. Attribute `view_columns` tells how the columns were taken.
+    model columns are not valid. With `view_zenith_angle` and `view_azimuth_angle` [degrees], so that it serves
+    `chansim.simulate` as its view as well. Attribute `view_columns` tells how the columns were taken.
 
     Raises
     ------
@@ -73,10 +84,45 @@ def scene_on_pixels(
     sampler = _Sampler(scene, locator(scene), method, interpolation)
     _require_overlap(sampler, pixels)
     result = _assemble(sampler, pixels)
+    if grid_mapping is not None:
+        result["grid_mapping"] = grid_mapping
+        for name, variable in result.data_vars.items():
+            if set(pixels["latitude"].dims) <= set(variable.dims):
+                result[name].attrs["grid_mapping"] = "grid_mapping"
     if lazy == "never" or (lazy == "auto" and result.nbytes < _IN_MEMORY):
         result = result.compute()
         result.attrs["masked_columns"] = int((~result["column_valid"]).sum())
     return result
+
+
+def scene_on_grid(scene, grid, **options):
+    """A canonical scene on the pixels of a geostationary fixed grid.
+
+    Parameters
+    ----------
+    scene : canonical Dataset
+    grid : `fixed_grid.FixedGrid`
+    options : method, interpolation, lazy, see `scene_on_pixels`
+
+    Returns
+    -------
+    xarray.Dataset, see `scene_on_pixels`, with the grid mapping of the fixed grid
+
+    Raises
+    ------
+    ViewError : no pixel sees the domain of the scene; the message tells which longitudes would
+    """
+    pixels = grid.pixels()
+    seen = grid.to_scan_angles(scene["latitude"].values, scene["longitude"].values)[0]
+    if not np.isfinite(seen).any():
+        raise ViewError(
+            f"the satellite at {grid.longitude:g} degrees east sees no part of the scene; "
+            + in_words(scene["latitude"].values, scene["longitude"].values)
+        )
+    angles = pixels["view_zenith_angle"], pixels["view_azimuth_angle"]
+    return scene_on_pixels(
+        scene, pixels["latitude"], pixels["longitude"], *angles, grid_mapping=grid.grid_mapping(), **options
+    )
 
 
 def _check_choice(name, value, choices):
@@ -122,24 +168,30 @@ def _require_overlap(sampler, pixels):
 
 def _assemble(sampler, pixels):
     """The lazy result, in blocks of whole rows of pixels."""
-    shape = pixels["latitude"].shape
+    dims, shape = pixels["latitude"].dims, pixels["latitude"].shape
     rows = max(1, PIXELS_AT_ONCE // int(np.prod(shape[1:])))
-    names = sampler.output_names()
-    pieces = {name: [] for name in names}
-    for start in range(0, shape[0], rows):
-        arrays = [pixels[n].values[start : start + rows] for n in ("latitude", "longitude", "zenith", "azimuth")]
-        block = dask.delayed(sampler.block, pure=False, traverse=False)(*arrays)
-        for name in names:
-            extra, dtype = sampler.form(name)
-            piece = dask.array.from_delayed(block[name], (*extra, *arrays[0].shape), dtype=dtype)
-            pieces[name].append(piece)
-    dims = pixels["latitude"].dims
-    variables = {}
-    for name in names:
-        extra_dims = sampler.extra_dims(name)
-        values = dask.array.concatenate(pieces[name], axis=len(extra_dims))
-        variables[name] = ((*extra_dims, *dims), values, _without_mapping(sampler.scene[name].attrs))
+    chunked = pixels.reset_coords(drop=True).drop_vars(dims, errors="ignore").chunk({dims[0]: rows})
+
+    template = {}
+    for name in sampler.output_names():
+        extra, dtype = sampler.form(name)
+        chunks = (*extra, chunked.chunksizes[dims[0]], *shape[1:])
+        template[name] = (
+            (*sampler.extra_dims(name), *dims),
+            dask.array.zeros((*extra, *shape), dtype=dtype, chunks=chunks),
+        )
+    found = xr.map_blocks(_work, chunked, kwargs={"sampler": sampler}, template=xr.Dataset(template))
+    variables = {
+        name: (v.dims, v.data, _without_mapping(sampler.scene[name].attrs)) for name, v in found.data_vars.items()
+    }
     return _finish(sampler, pixels, variables)
+
+
+def _work(part, sampler):
+    """One block of pixels, as a Dataset."""
+    values = sampler.block(*(part[name].values for name in ("latitude", "longitude", "zenith", "azimuth")))
+    dims = part["latitude"].dims
+    return xr.Dataset({name: ((*sampler.extra_dims(name), *dims), v) for name, v in values.items()})
 
 
 def _without_mapping(attributes):
@@ -151,6 +203,9 @@ def _finish(sampler, pixels, variables):
     for name in scene.data_vars:
         if name not in variables and name != "grid_mapping" and not set(scene[name].dims) & set(sampler.dims):
             variables[name] = scene[name].variable
+    for name, standard_name in (("zenith", "sensor_zenith_angle"), ("azimuth", "sensor_azimuth_angle")):
+        attributes = {"units": "degree", "standard_name": standard_name}
+        variables[f"view_{name}_angle"] = (pixels["latitude"].dims, pixels[name].values, attributes)
     coordinates = {n: c for n, c in pixels.coords.items()}
     for name in ("latitude", "longitude"):
         coordinates[name] = (pixels["latitude"].dims, pixels[name].values, dict(scene[name].attrs))
@@ -170,8 +225,13 @@ class _Sampler:
         self.scene, self.locator = scene, where
         self.method, self.interpolation = method, interpolation
         self.dims = scene["column_valid"].dims
+        self._token = uuid.uuid4().hex
         if interpolation == "bilinear" and not where.between:
             raise ViewError("a list of cells has no rows and columns to interpolate between; use 'nearest'")
+
+    def __dask_tokenize__(self):
+        # a name for the graph; without it dask would hash the values of the whole scene
+        return type(self).__name__, self._token
 
     @functools.cached_property
     def _own_names(self):
@@ -204,7 +264,7 @@ class _Sampler:
         values = self._columns(*seen) if usable.any() else {}
         for name in self._own_names:
             extra, dtype = self.form(name)
-            fill = np.nan if dtype.kind == "f" else 0
+            fill = np.nan if dtype.kind == "f" and name not in _NEAREST_ONLY else 0
             whole = np.full((*extra, usable.size), fill, dtype=dtype)
             if name in values:
                 whole[..., usable] = values[name]
