@@ -114,6 +114,12 @@ def _add_simulate(commands):
     parser.add_argument("--replace", action="store_true", help="overwrite the result if it is there")
     _add_imager_options(parser)
     _add_view_options(parser)
+    parser.add_argument(
+        "--solver",
+        default="scattering",
+        choices=("scattering", "absorbing"),
+        help="multiple scattering in cloud, or condensate that only absorbs (default: %(default)s)",
+    )
     parser.add_argument("--co2", type=float, metavar="PPM", help="CO2 mole fraction instead of the default")
     parser.add_argument("--draw", metavar="FOLDER", help="draw maps of all channels to this folder as well")
 
@@ -182,13 +188,13 @@ def _progress():
     return advance
 
 
-def _run_simulation(scene, imager, channels, view, output, existing, gases=None):
+def _run_simulation(scene, imager, channels, view, output, existing, settings=None):
     from chansim.channels.imager import load_imager
     from chansim.output import write_dataset
-    from chansim.simulate import Settings, simulate
+    from chansim.simulate import simulate
 
     imager = load_imager(imager, channels)
-    result = simulate(scene, imager, view=view, settings=Settings(gases=gases or {}), progress=_progress())
+    result = simulate(scene, imager, view=view, settings=settings, progress=_progress())
     write_dataset(result, output, existing)
     print(_summary(result, output))
     return result
@@ -230,13 +236,15 @@ def _demo(options):
 def _simulate(options):
     from chansim.output import check_target
     from chansim.scene.reading import open_scene
+    from chansim.simulate import Settings
 
     existing = "replace" if options.replace else "keep"
     check_target(options.output, existing)
     scene = open_scene(options.file, time=options.time, mapping=options.mapping)
     gases = {} if options.co2 is None else {"co2": options.co2 * 1e-6}
+    settings = Settings(solver=options.solver, gases=gases)
     result = _run_simulation(
-        scene, options.imager, _ids(options.channels), _view(options), options.output, existing, gases
+        scene, options.imager, _ids(options.channels), _view(options), options.output, existing, settings
     )
     if options.draw:
         _make_folder(Path(options.draw))

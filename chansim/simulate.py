@@ -11,13 +11,14 @@ from chansim.channels.absorption_tables import PRESSURES, TEMPERATURES, absorpti
 from chansim.channels.atlas import load_atlas
 from chansim.channels.imager import load_imager
 from chansim.errors import SceneError, ViewError
-from chansim.optics.condensate import SPECIES, condensate_optics, effective_radii
+from chansim.optics.condensate import SPECIES, condensate_moments, condensate_optics, effective_radii
 from chansim.optics.surface import channel_emissivity
 from chansim.scene.reading import open_scene
 from chansim.scene.reference_atmosphere import GASES as REFERENCE_GASES
 from chansim.scene.reference_atmosphere import reference_profile, reference_table
 from chansim.transfer.overlap import OVERLAPS
-from chansim.transfer.solve import RESULTS, solve_columns
+from chansim.transfer.scattering import quadrature
+from chansim.transfer.solve import RESULTS, SOLVERS, solve_columns
 from chansim.view.lines_of_sight import as_view
 
 CAUTION = (
@@ -40,6 +41,8 @@ _REFERENCE_STRIDE = 3  # of its levels, which lie 5 % apart in pressure: as fine
 class Settings:
     """What a simulation assumes; recorded in its output.
 
+    solver : "scattering" (multiple scattering wherever there is condensate) or "absorbing" (condensate only absorbs)
+    streams : of the scattering solver, for each half-sphere
     overlap : a key of `chansim.transfer.overlap.OVERLAPS`
     subcolumns : for columns with partial cloud
     decorrelation_length : of the exponential-random overlap [m]
@@ -48,6 +51,8 @@ class Settings:
     gases : {gas: mole fraction at the surface} that replace the defaults of co2, n2o, ch4, co
     """
 
+    solver: str = "scattering"
+    streams: int = 2
     overlap: str = "maximum-random"
     subcolumns: int = 20
     decorrelation_length: float = 2000.0
@@ -87,6 +92,10 @@ def simulate(scene, imager="tarn", *, channels=None, view="nadir", settings=None
         scene = open_scene(scene)
     if settings.overlap not in OVERLAPS:
         raise SceneError(f"unknown cloud overlap {settings.overlap!r}; use one of {', '.join(OVERLAPS)}")
+    if settings.solver not in SOLVERS:
+        raise SceneError(f"unknown solver {settings.solver!r}; use one of {', '.join(SOLVERS)}")
+    if not 1 <= settings.streams <= 16:
+        raise SceneError(f"streams {settings.streams}: give 1 to 16 for each half-sphere (2 is the default)")
     if settings.subcolumns < 1:
         raise SceneError(f"subcolumns {settings.subcolumns}: at least 1 is needed (20 is the default)")
     imager = load_imager(imager, channels)
@@ -97,7 +106,10 @@ def simulate(scene, imager="tarn", *, channels=None, view="nadir", settings=None
     tables = absorption_tables(
         imager.channels, _well_mixed(settings.gases, given), given, atlas.pressure, atlas.temperature
     )
-    optics = condensate_optics(tables.wavenumber, settings.ice_habit)
+    optics = (
+        *condensate_optics(tables.wavenumber, settings.ice_habit),
+        condensate_moments(tables.wavenumber, settings.ice_habit, 2 * settings.streams + 1),
+    )
     out = {name: np.empty((len(imager.channels), *shape), dtype=np.float32) for name in RESULTS}
     zenith = np.empty(shape, dtype=np.float32)
     counts = {}
@@ -293,7 +305,13 @@ def _solve_slab(slab, imager, view, settings, emissivity, tables, optics, dims, 
         np.cos(np.radians(np.where(valid, zenith, 0.0))),
         surface_emissivity,
         (tables.table, grid, tables.wavenumber, tables.weight, tables.first),
-        (OVERLAPS[settings.overlap], float(settings.decorrelation_length), int(settings.subcolumns)),
+        (
+            OVERLAPS[settings.overlap],
+            float(settings.decorrelation_length),
+            int(settings.subcolumns),
+            SOLVERS[settings.solver],
+        ),
+        quadrature(settings.streams),
         results,
     )
     return results.reshape(len(RESULTS), len(imager.channels), *shape), zenith.reshape(shape)
@@ -413,6 +431,8 @@ def _record(scene, imager, view, settings, counts, atlas):
         "atlas_sha256": atlas.digest,
         "co2_wings": str(atlas.attributes.get("co2_wings", "")),
         "date_created": datetime.datetime.now(datetime.UTC).strftime("%Y-%m-%dT%H:%M:%SZ"),
+        "solver": settings.solver,
+        "streams": settings.streams,
         "cloud_overlap": settings.overlap,
         "subcolumns": settings.subcolumns,
         "decorrelation_length_m": settings.decorrelation_length,

@@ -5,6 +5,7 @@ import numpy as np
 from chansim.channels.absorption_tables import PRESSURES, TEMPERATURES, absorption_tables
 from chansim.channels.atlas import load_atlas
 from chansim.constants import WATER_TO_AIR
+from chansim.transfer.scattering import quadrature
 from chansim.transfer.solve import RESULTS, solve_columns
 
 GIVEN = ("co2", "o3", "n2o", "ch4", "co")
@@ -33,7 +34,7 @@ def solve_profile(channels, pressure, temperature, mole_fraction, zenith, skin, 
         TEMPERATURES[1] - TEMPERATURES[0],
     )
     nodes = tables.weight.size
-    nothing = (np.zeros((0, 3)), *[np.zeros((0, 2, nodes))] * 3)
+    nothing = (np.zeros((0, 3)), *[np.zeros((0, 2, nodes))] * 3, np.zeros((0, 2, nodes, 5)))
     results = np.zeros((len(RESULTS), len(channels), n))
     solve_columns(
         np.ones(n, dtype=bool),
@@ -57,7 +58,8 @@ def solve_profile(channels, pressure, temperature, mole_fraction, zenith, skin, 
         np.cos(np.radians(zenith)),
         np.full((len(channels), n), emissivity),
         (tables.table, grid, tables.wavenumber, tables.weight, tables.first),
-        (0, 2000.0, 1),
+        (0, 2000.0, 1, 0),
+        quadrature(2),
         results,
         threads,
     )

@@ -76,8 +76,8 @@ def condensate_optics(wavenumber, ice_habit=HABITS[0]):
     return (axis, *out)
 
 
-def condensate_moments(wavenumber, count=64, ice_habit=HABITS[0]):
-    """Legendre moments chi_l (chi_0 = 1, chi_1 = asymmetry): (species, radii, nodes, count)."""
+def condensate_moments(wavenumber, ice_habit=HABITS[0], count=65):
+    """Legendre moments chi_l (chi_0 = 1, chi_1 = asymmetry), l = 0 .. count - 1: (species, radii, nodes, count)."""
     _check_habit(ice_habit)
     most = int(max(radius_axis(species)[2] for species in SPECIES))
     return np.stack([_at_nodes(f"{species}_moments", wavenumber, most)[..., :count] for species in SPECIES])

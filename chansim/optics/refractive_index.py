@@ -102,7 +102,7 @@ def verified_bytes(name):
     try:
         content = folder.joinpath(name).read_bytes()
         recorded = folder.joinpath(CHECKSUM_FILE).read_text()
-    except OSError as error:
+    except (OSError, UnicodeDecodeError) as error:
         raise DataError(f"cannot read optical data file {name}: {error}; {remedy}") from error
     known = {parts[1]: parts[0] for parts in (line.split() for line in recorded.splitlines()) if len(parts) == 2}
     found = hashlib.sha256(content).hexdigest()

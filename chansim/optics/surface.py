@@ -11,6 +11,7 @@ import math
 import numpy as np
 from numba import njit
 
+from chansim.errors import OpticsError
 from chansim.optics.refractive_index import refractive_index
 
 ZENITHS = np.concatenate([np.arange(0.0, 60.0, 5.0), np.arange(60.0, 86.0, 2.5)])  # degrees
@@ -97,10 +98,17 @@ def channel_emissivity(surface_class, land_fraction, zenith, wind_speed, channel
     land_fraction : (columns,) [1]; zenith : (columns,) [degrees]; wind_speed : (columns,) [m s-1]
     channel_wavenumbers, channel_weights : nodes [cm-1] and weights of each channel
 
+    Raises
+    ------
+    OpticsError : an unknown surface class
+
     Returns
     -------
-    (channels, columns) [1]; a sea column with some land is mixed by land_fraction
+    (channels, columns) [1]; without a class, sea and land are mixed by land_fraction
     """
+    if surface_class is not None and not np.isin(surface_class, (0, 1, 2, 3, 4)).all():
+        wrong = surface_class[~np.isin(surface_class, (0, 1, 2, 3, 4))][0]
+        raise OpticsError(f"surface class {wrong}: known are 0 sea, 1 land, 2 desert, 3 snow, 4 ice")
     out = np.empty((len(channel_wavenumbers), zenith.size))
     sea = np.empty(zenith.size)
     land = np.clip(land_fraction, 0.0, 1.0)
@@ -116,10 +124,10 @@ def channel_emissivity(surface_class, land_fraction, zenith, wind_speed, channel
         )
         ground = np.full(zenith.size, class_emissivity(1, centre))
         share = land
-        if surface_class is not None:
+        if surface_class is not None:  # a class that is given wins over the land fraction
             for number in (2, 3, 4):
                 ground[surface_class == number] = class_emissivity(number, centre)
-            share = np.where(surface_class == 4, 1.0, np.where(surface_class == 0, np.minimum(land, 0.5), land))
+            share = np.where(surface_class == 0, 0.0, 1.0)
         out[i] = sea + (ground - sea) * share
     return out
 

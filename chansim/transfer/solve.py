@@ -27,6 +27,7 @@ from chansim.transfer.absorbing import (
 )
 from chansim.transfer.columns import build_levels, hydrostatic_heights, layer_amounts, layer_secants
 from chansim.transfer.overlap import fill_subcolumn
+from chansim.transfer.scattering import thermal_radiance
 
 
 @njit(cache=True)
@@ -213,6 +214,7 @@ def peak_of_weighting_function(layers, level_p, profile):
 
 
 # what `solve_columns` returns for each channel and column, in order
+SOLVERS = {"absorbing": 0, "scattering": 1}  # what users may name
 RESULTS = ("radiance", "radiance_clear", "transmittance", "cloud_optical_thickness", "peak_pressure")
 _BLOCK = 512  # columns of one task, which share one set of work arrays
 
@@ -231,26 +233,76 @@ def _layer_condensate(layers, level_p, level_z, layer_cell, mixing, log_radius, 
 
 
 @njit(cache=True)
+def _cloudy_profile(layers, tau, secant, cloud_tau, cloud_omega, weight, first, last, profile):
+    """Channel-mean transmittance from each level to the top, absorption alone: profile (layers + 1,)."""
+    profile[: layers + 1] = 0.0
+    for i in range(last - first):
+        through = 1.0
+        profile[0] += weight[first + i]
+        for j in range(layers):
+            through *= math.exp(-(tau[j, i] + cloud_tau[j, i] * (1.0 - cloud_omega[j, i])) * secant[j])
+            if through < 1e-9:
+                break
+            profile[j + 1] += weight[first + i] * through
+
+
+@njit(cache=True)
 def _absorbing_cloudy(
     layers, tau, secant, cloud_tau, cloud_omega, planck_level, bend, planck_surface, emissivity, weight, first, last,
-    work, profile
+    work
 ):  # fmt: skip
     """Channel radiance with condensate as an absorber. work : (2, layers)"""
     slant, bent = work[0, :layers], work[1, :layers]
     radiance = 0.0
-    profile[: layers + 1] = 0.0
     for i in range(last - first):
         for j in range(layers):
             total = tau[j, i] + cloud_tau[j, i] * (1.0 - cloud_omega[j, i])
             slant[j] = total * secant[j]
             bent[j] = bend[j, i] * tau[j, i] / total if total > 0.0 else 0.0
-        through = 1.0
-        profile[0] += weight[first + i]
-        for j in range(layers):
-            through *= math.exp(-slant[j])
-            profile[j + 1] += weight[first + i] * through
         value, _ = absorbing_radiance(slant, planck_level[: layers + 1, i], bent, planck_surface[i], emissivity)
         radiance += weight[first + i] * value
+    return radiance
+
+
+@njit(cache=True)
+def _mixed_moments(layers, path, radius, inside, axis, extinction, albedo, moments, node, out):
+    """Legendre moments of the mixed condensate of each layer at one node: out (layers, moments)."""
+    count = moments.shape[3]
+    for j in range(layers):
+        if not inside[j]:
+            continue
+        scattered = 0.0
+        out[j, :count] = 0.0
+        for s in range(path.shape[1]):
+            if path[j, s] <= 0.0:
+                continue
+            r, w = particle_index(radius[j, s], axis[s, 0], axis[s, 1], int(axis[s, 2]))
+            for k in range(2):
+                share = (1.0 - w) if k == 0 else w
+                part = path[j, s] * share * extinction[s, r + k, node] * albedo[s, r + k, node]
+                scattered += part
+                for degree in range(count):
+                    out[j, degree] += part * moments[s, r + k, node, degree]
+        for degree in range(count):
+            out[j, degree] /= scattered
+
+
+@njit(cache=True)
+def _scattering_cloudy(
+    layers, tau, secant, cloud_tau, cloud_omega, path, radius, inside, optics, planck_level, bend, planck_surface,
+    emissivity, weight, first, last, view_cosine, solver
+):  # fmt: skip
+    """Channel radiance with multiple scattering."""
+    axis, extinction, albedo, _, moments = optics
+    quad, matrices, vectors, mixed, state = solver
+    radiance = 0.0
+    for i in range(last - first):
+        _mixed_moments(layers, path, radius, inside, axis, extinction, albedo, moments, first + i, mixed)
+        radiance += weight[first + i] * thermal_radiance(
+            tau[:layers, i], secant[:layers], cloud_tau[:layers, i], cloud_omega[:layers, i], mixed[:layers],
+            planck_level[: layers + 1, i], bend[:layers, i], planck_surface[i], emissivity, 1.0, view_cosine, quad,
+            (matrices, vectors), state
+        )  # fmt: skip
     return radiance
 
 
@@ -279,76 +331,65 @@ def _subcolumn_masks(cells, fraction, height, overlap, decorrelation_length, cou
 
 
 @njit(cache=True)
+def _cloudy_cells(mixing, fraction, pressure, surface_pressure, cloudy):
+    """Mark the cells above ground that hold condensate; True if there is any."""
+    found = False
+    for k in range(cloudy.size):
+        cloudy[k] = False
+        for s in range(mixing.shape[0]):
+            if mixing[s, k] > 0.0 and fraction[k] > 0.0 and pressure[k] < surface_pressure:
+                cloudy[k] = True
+                found = True
+    return found
+
+
+@njit(cache=True)
+def _cloud_of_subcolumn(layers, layer_cell, mask, cloudy, path, radius, optics, first, last, inside, fields):
+    """Optical properties of the condensate of one subcolumn, zero elsewhere; True if there is any.
+
+    inside : (layers,) bool result; fields : extinction optical thickness, albedo, asymmetry (layers, nodes), results
+    """
+    axis, extinction, albedo, asymmetry, _ = optics
+    cloud_tau, cloud_omega, cloud_g = fields
+    found = False
+    for j in range(layers):
+        cell = layer_cell[j]
+        inside[j] = cell >= 0 and mask[cell] and cloudy[cell]
+        if inside[j]:
+            found = True
+            cloud_layer_optics(path[j], radius[j], axis, extinction, albedo, asymmetry, first, last, cloud_tau[j],
+                               cloud_omega[j], cloud_g[j])  # fmt: skip
+        else:
+            cloud_tau[j, : last - first] = 0.0
+            cloud_omega[j, : last - first] = 0.0
+            cloud_g[j, : last - first] = 0.0
+    return found
+
+
+@njit(cache=True)
 def _one_column(
-    c, atmosphere, surface, reference, cloud, optics, view_cosine, emissivity, tables, options, work, results
+    c, atmosphere, surface, reference, cloud, optics, view_cosine, emissivity, tables, options, quad, work, results
 ):
     """Solve all channels of column c; see `solve_columns`."""
     pressure, temperature, humidity, gases, half_pressure = atmosphere
     surface_pressure, air_temperature, air_humidity, skin_temperature, surface_height = surface
     ref_pressure, ref_temperature, ref_gases = reference
     mixing, log_radius, fraction = cloud
-    axis, extinction, albedo, asymmetry = optics
     table, grid, wavenumber, weight, firsts = tables
-    overlap, decorrelation_length, count = options
-    (
-        points,
-        level_p,
-        level_t,
-        level_x,
-        level_z,
-        layer_cell,
-        amount,
-        effective_p,
-        effective_t,
-        secant,
-        tau,
-        planck_level,
-        planck_surface,
-        state,
-        profile,
-        cloudy,
-        path,
-        radius,
-        cloud_tau,
-        cloud_omega,
-        cloud_g,
-        masks,
-        portion,
-        slant,
-        cell_height,
-        mean_profile,
-        bend,
-        corner,
-        share,
-    ) = work
+    overlap, decorrelation_length, count, scattering = options
+    level_work, gas_work, clear_work, cloud_work, solver_work = work
+    points, level_p, level_t, level_x, level_z, layer_cell = level_work
+    amount, effective_p, effective_t, corner, share, secant = gas_work
+    tau, planck_level, planck_surface, bend, state, profile, mean_profile = clear_work
+    cloudy, path, radius, fields, masks, portion, cell_height, slant, inside = cloud_work
 
     row = c if pressure.shape[0] > 1 else 0
-    any_cloud = False
-    for k in range(cloudy.size):
-        cloudy[k] = False
-        for s in range(mixing.shape[0]):
-            if mixing[s, c, k] > 0.0 and fraction[c, k] > 0.0 and pressure[row, k] < surface_pressure[c]:
-                cloudy[k] = True
-                any_cloud = True
+    any_cloud = _cloudy_cells(mixing[:, c], fraction[c], pressure[row], surface_pressure[c], cloudy)
     levels = build_levels(
-        pressure[row],
-        temperature[c],
-        humidity[c],
-        gases[:, c],
-        half_pressure[row],
-        cloudy,
-        surface_pressure[c],
-        air_temperature[c],
-        air_humidity[c],
-        ref_pressure,
-        ref_temperature[c],
-        ref_gases[:, c],
-        points,
-        level_p,
-        level_t,
-        level_x,
-        layer_cell,
-    )
+        pressure[row], temperature[c], humidity[c], gases[:, c], half_pressure[row], cloudy, surface_pressure[c],
+        air_temperature[c], air_humidity[c], ref_pressure, ref_temperature[c], ref_gases[:, c], points, level_p,
+        level_t, level_x, layer_cell,
+    )  # fmt: skip
     layers = levels - 1
     hydrostatic_heights(levels, level_p, level_t, level_x, surface_height[c], level_z)
     layer_amounts(levels, level_p, level_t, level_x, level_z, amount, effective_p, effective_t)
@@ -372,75 +413,38 @@ def _one_column(
         source_bends(layers, level_p, level_t, tau, planck_level, wavenumber, first, last, bend)
         for i in range(first, last):
             planck_surface[i - first] = planck_scalar(wavenumber[i], skin_temperature[c])
+        e = emissivity[channel, c]
         clear = clear_channel(
-            layers,
-            tau,
-            secant,
-            planck_level,
-            bend,
-            planck_surface,
-            emissivity[channel, c],
-            weight,
-            first,
-            last,
-            state,
-            profile,
+            layers, tau, secant, planck_level, bend, planck_surface, e, weight, first, last, state, profile
         )
-        total, thickness = 0.0, 0.0
-        if not any_cloud:
-            total = clear
-            mean_profile[:levels] = profile[:levels]
-        else:
+        total, thickness = clear, 0.0
+        mean_profile[:levels] = profile[:levels]
+        if any_cloud:
+            total = 0.0
             mean_profile[:levels] = 0.0
-            for m in range(different):
-                empty = True
-                for j in range(layers):
-                    inside = layer_cell[j] >= 0 and masks[m, layer_cell[j]] and cloudy[layer_cell[j]]
-                    if inside:
-                        cloud_layer_optics(
-                            path[j],
-                            radius[j],
-                            axis,
-                            extinction,
-                            albedo,
-                            asymmetry,
-                            first,
-                            last,
-                            cloud_tau[j],
-                            cloud_omega[j],
-                            cloud_g[j],
-                        )
-                        empty = False
-                        for i in range(last - first):
-                            thickness += portion[m] * weight[first + i] * cloud_tau[j, i]
-                    else:
-                        cloud_tau[j, : last - first] = 0.0
-                        cloud_omega[j, : last - first] = 0.0
-                        cloud_g[j, : last - first] = 0.0
-                if empty:
-                    total += portion[m] * clear
-                    for j in range(levels):
-                        mean_profile[j] += portion[m] * profile[j]
-                else:
-                    value = _absorbing_cloudy(
-                        layers,
-                        tau,
-                        secant,
-                        cloud_tau,
-                        cloud_omega,
-                        planck_level,
-                        bend,
-                        planck_surface,
-                        emissivity[channel, c],
-                        weight,
-                        first,
-                        last,
-                        slant,
-                        state[3],
-                    )
-                    total += portion[m] * value
-                    for j in range(levels):
-                        mean_profile[j] += portion[m] * state[3, j]
+        for m in range(different):
+            if not _cloud_of_subcolumn(
+                layers, layer_cell, masks[m], cloudy, path, radius, optics, first, last, inside, fields
+            ):
+                total += portion[m] * clear
+                mean_profile[:levels] += portion[m] * profile[:levels]
+                continue
+            _cloudy_profile(layers, tau, secant, fields[0], fields[1], weight, first, last, state[3])
+            if scattering:
+                value = _scattering_cloudy(
+                    layers, tau, secant, fields[0], fields[1], path, radius, inside, optics, planck_level, bend,
+                    planck_surface, e, weight, first, last, view_cosine[c], (quad, *solver_work),
+                )  # fmt: skip
+            else:
+                value = _absorbing_cloudy(
+                    layers, tau, secant, fields[0], fields[1], planck_level, bend, planck_surface, e, weight, first,
+                    last, slant,
+                )  # fmt: skip
+            total += portion[m] * value
+            mean_profile[:levels] += portion[m] * state[3, :levels]
+            for j in range(layers):
+                for i in range(last - first):
+                    thickness += portion[m] * weight[first + i] * fields[0][j, i]
         results[0, channel, c] = total
         results[1, channel, c] = clear
         results[2, channel, c] = mean_profile[levels - 1]
@@ -449,94 +453,54 @@ def _one_column(
 
 
 @njit(cache=True)
-def _work_arrays(model_levels, ref_levels, gases, species, nodes, subcolumns):
+def _work_arrays(model_levels, ref_levels, gases, species, nodes, subcolumns, streams):
+    """Work space of one task, in the groups that `_one_column` unpacks."""
     size = 2 * model_levels + ref_levels + 110
-    span = max(size, nodes)
-    points = (
-        np.empty(model_levels + ref_levels + 2),
-        np.empty(model_levels + ref_levels + 2),
-        np.empty((1 + gases, model_levels + ref_levels + 2)),
-        np.empty(model_levels + ref_levels + 2, dtype=np.int64),
-    )
-    return (
-        points,
-        np.empty(size),
-        np.empty(size),
-        np.empty((1 + gases, size)),
-        np.empty(size),
-        np.empty(size, dtype=np.int64),
-        np.empty((3 + gases, size)),
-        np.empty((2 + gases, size)),
-        np.empty((2 + gases, size)),
-        np.empty(size),
-        np.empty((size, nodes)),
-        np.empty((size, nodes)),
-        np.empty(nodes),
-        np.empty((4, span)),
-        np.empty(size),
-        np.empty(model_levels, dtype=np.bool_),
-        np.empty((size, species)),
-        np.zeros((size, species)),
-        np.empty((size, nodes)),
-        np.empty((size, nodes)),
-        np.empty((size, nodes)),
-        np.empty((subcolumns + 1, model_levels), dtype=np.bool_),
-        np.empty(subcolumns + 1),
-        np.empty((2, size)),
-        np.zeros(model_levels),
-        np.empty(size),
-        np.empty((size, nodes)),
-        np.empty((2 + gases, size, 2), dtype=np.int64),
-        np.empty((2 + gases, size, 6)),
-    )
+    source = model_levels + ref_levels + 2
+    points = (np.empty(source), np.empty(source), np.empty((1 + gases, source)), np.empty(source, dtype=np.int64))
+    level_work = (points, np.empty(size), np.empty(size), np.empty((1 + gases, size)), np.empty(size),
+                  np.empty(size, dtype=np.int64))  # fmt: skip
+    gas_work = (np.empty((3 + gases, size)), np.empty((2 + gases, size)), np.empty((2 + gases, size)),
+                np.empty((2 + gases, size, 2), dtype=np.int64), np.empty((2 + gases, size, 6)), np.empty(size))  # fmt: skip
+    clear_work = (np.empty((size, nodes)), np.empty((size, nodes)), np.empty(nodes), np.empty((size, nodes)),
+                  np.empty((4, max(size, nodes))), np.empty(size), np.empty(size))  # fmt: skip
+    fields = (np.empty((size, nodes)), np.empty((size, nodes)), np.empty((size, nodes)))
+    cloud_work = (np.empty(model_levels, dtype=np.bool_), np.empty((size, species)), np.zeros((size, species)), fields,
+                  np.empty((subcolumns + 1, model_levels), dtype=np.bool_), np.empty(subcolumns + 1),
+                  np.zeros(model_levels), np.empty((2, size)), np.empty(size, dtype=np.bool_))  # fmt: skip
+    solver_work = (np.zeros((20, streams, streams)), np.zeros((32, streams)), np.zeros((size, 2 * streams + 1)),
+                   np.zeros(2))  # fmt: skip
+    return level_work, gas_work, clear_work, cloud_work, solver_work
 
 
 @njit(cache=True, nogil=True)
 def _solve_range(
-    start, stop, valid, atmosphere, surface, reference, cloud, optics, view_cosine, emissivity, tables, options, results
-):
+    start, stop, valid, atmosphere, surface, reference, cloud, optics, view_cosine, emissivity, tables, options, quad,
+    results,
+):  # fmt: skip
     """Columns start..stop - 1 of `solve_columns`; runs without the interpreter lock."""
     firsts = tables[4]
     nodes = 0
     for channel in range(firsts.size - 1):
         nodes = max(nodes, firsts[channel + 1] - firsts[channel])
     work = _work_arrays(
-        atmosphere[1].shape[1], reference[0].size, atmosphere[3].shape[0], cloud[0].shape[0], nodes, options[2]
-    )
+        atmosphere[1].shape[1], reference[0].size, atmosphere[3].shape[0], cloud[0].shape[0], nodes, options[2],
+        quad[0].size,
+    )  # fmt: skip
     for c in range(start, stop):
         if valid[c]:
             _one_column(
-                c,
-                atmosphere,
-                surface,
-                reference,
-                cloud,
-                optics,
-                view_cosine,
-                emissivity,
-                tables,
-                options,
-                work,
+                c, atmosphere, surface, reference, cloud, optics, view_cosine, emissivity, tables, options, quad, work,
                 results,
-            )
+            )  # fmt: skip
         else:
             results[:, :, c] = np.nan
 
 
 def solve_columns(
-    valid,
-    atmosphere,
-    surface,
-    reference,
-    cloud,
-    optics,
-    view_cosine,
-    emissivity,
-    tables,
-    options,
-    results,
+    valid, atmosphere, surface, reference, cloud, optics, view_cosine, emissivity, tables, options, quad, results,
     threads=None,
-):
+):  # fmt: skip
     """Solve many columns.
 
     Parameters
@@ -549,30 +513,23 @@ def solve_columns(
     reference : pressure (R,) [Pa], temperature (columns, R) [K], gases (1 + G, columns, R) with water first
     cloud : mass mixing ratios (S, columns, L) [kg kg-1], ln effective radius [m] (S, columns, L),
         cloud fraction (columns, L)
-    optics : axis (S, 3), extinction [m2 kg-1], single-scattering albedo, asymmetry (S, radii, nodes)
+    optics : axis (S, 3), extinction [m2 kg-1], single-scattering albedo, asymmetry (S, radii, nodes), Legendre
+        moments (S, radii, nodes, 2 streams + 1)
     view_cosine : (columns,) cosine of the view zenith angle at the surface
     emissivity : (channels, columns)
     tables : absorption table (P, T, slots, nodes) float32, its grid (ln first p, ln step, first T, step),
         wavenumber (nodes,), weight (nodes,), first node of each channel (channels + 1,)
-    options : overlap (value of OVERLAPS), decorrelation length [m], number of subcolumns
+    options : overlap (value of OVERLAPS), decorrelation length [m], number of subcolumns, 1 to scatter and 0 to
+        absorb only
+    quad : streams of the scattering solver, see `scattering.quadrature`
     results : (len(RESULTS), channels, columns), filled
     threads : worker threads; None = one for each processor
     """
     columns = valid.size
     threads = threads or os.cpu_count() or 1
     arguments = (
-        valid,
-        atmosphere,
-        surface,
-        reference,
-        cloud,
-        optics,
-        view_cosine,
-        emissivity,
-        tables,
-        options,
-        results,
-    )
+        valid, atmosphere, surface, reference, cloud, optics, view_cosine, emissivity, tables, options, quad, results
+    )  # fmt: skip
     size = max(1, min(_BLOCK, -(-columns // threads)))
     starts = range(0, columns, size)
     if threads == 1 or len(starts) == 1:
