@@ -11,15 +11,20 @@ from chansim.channels.absorption_tables import PRESSURES, TEMPERATURES, absorpti
 from chansim.channels.atlas import load_atlas
 from chansim.channels.imager import load_imager
 from chansim.errors import SceneError, ViewError
-from chansim.optics.condensate import SPECIES, condensate_moments, condensate_optics, effective_radii
+from chansim.optics.condensate import SPECIES, condensate_moments, condensate_optics, effective_radii, radius_axis
+from chansim.optics.phase import SHORTWAVE, sunlit_optics
 from chansim.optics.surface import channel_emissivity
+from chansim.quality import flag_attributes, quality_flags
 from chansim.scene.reading import open_scene
 from chansim.scene.reference_atmosphere import GASES as REFERENCE_GASES
 from chansim.scene.reference_atmosphere import reference_profile, reference_table
+from chansim.transfer.emission_level import emission_pressure
 from chansim.transfer.overlap import OVERLAPS
 from chansim.transfer.scattering import quadrature
 from chansim.transfer.solve import RESULTS, SOLVERS, solve_columns
 from chansim.view.lines_of_sight import as_view
+from chansim.view.solar_irradiance import solar_irradiance
+from chansim.view.solar_position import relative_azimuth, solar_angles, solar_distance_factor
 
 CAUTION = (
     "A simulation from model output, not an observation. Official warnings and the judgement of licensed "
@@ -34,6 +39,7 @@ _TRACE_GASES = {
 }
 _GAS_NAMES = {gas: name for name, gas in _TRACE_GASES.items()} | {"o3": "ozone_mole_fraction"}
 _COLUMNS_AT_ONCE = 16384
+SUNLIGHT = ("auto", "none")
 _REFERENCE_STRIDE = 3  # of its levels, which lie 5 % apart in pressure: as fine as the solver needs
 
 
@@ -42,7 +48,8 @@ class Settings:
     """What a simulation assumes; recorded in its output.
 
     solver : "scattering" (multiple scattering wherever there is condensate) or "absorbing" (condensate only absorbs)
-    streams : of the scattering solver, for each half-sphere
+    streams, solar_streams : of the scattering solver and of its solar term, for each half-sphere
+    sunlight : "auto" (where the scene has a valid time, or the view gives solar angles) or "none" (night everywhere)
     overlap : a key of `chansim.transfer.overlap.OVERLAPS`
     subcolumns : for columns with partial cloud
     decorrelation_length : of the exponential-random overlap [m]
@@ -53,6 +60,8 @@ class Settings:
 
     solver: str = "scattering"
     streams: int = 2
+    sunlight: str = "auto"
+    solar_streams: int = 8
     overlap: str = "maximum-random"
     subcolumns: int = 20
     decorrelation_length: float = 2000.0
@@ -78,10 +87,11 @@ def simulate(scene, imager="tarn", *, channels=None, view="nadir", settings=None
 
     Returns
     -------
-    xarray.Dataset with dimensions (channel, horizontal dimensions of the scene):
-    brightness_temperature, brightness_temperature_clear [K], radiance [mW m-2 sr-1 (cm-1)-1],
-    surface_transmittance [1], cloud_optical_thickness [1], weighting_function_peak [Pa]; what was
-    assumed is in its attributes
+    xarray.Dataset with dimensions (channel, horizontal dimensions of the scene), see `docs/solvers.md`:
+    brightness_temperature, brightness_temperature_clear, cloud_effect, subcolumn_spread [K]; radiance, radiance_solar
+    [mW m-2 sr-1 (cm-1)-1]; surface_transmittance, cloud_optical_thickness [1]; weighting_function_peak,
+    effective_emission_pressure [Pa]; weighting_function_peak_height [m]; quality_flag; what was assumed is in its
+    attributes
 
     Raises
     ------
@@ -90,14 +100,7 @@ def simulate(scene, imager="tarn", *, channels=None, view="nadir", settings=None
     settings = settings or Settings()
     if not (isinstance(scene, xr.Dataset) and "column_valid" in scene):
         scene = open_scene(scene)
-    if settings.overlap not in OVERLAPS:
-        raise SceneError(f"unknown cloud overlap {settings.overlap!r}; use one of {', '.join(OVERLAPS)}")
-    if settings.solver not in SOLVERS:
-        raise SceneError(f"unknown solver {settings.solver!r}; use one of {', '.join(SOLVERS)}")
-    if not 1 <= settings.streams <= 16:
-        raise SceneError(f"streams {settings.streams}: give 1 to 16 for each half-sphere (2 is the default)")
-    if settings.subcolumns < 1:
-        raise SceneError(f"subcolumns {settings.subcolumns}: at least 1 is needed (20 is the default)")
+    _check_settings(settings)
     imager = load_imager(imager, channels)
     dims, shape = _horizontal(scene)
     view = as_view(view)
@@ -110,17 +113,21 @@ def simulate(scene, imager="tarn", *, channels=None, view="nadir", settings=None
         *condensate_optics(tables.wavenumber, settings.ice_habit),
         condensate_moments(tables.wavenumber, settings.ice_habit, 2 * settings.streams + 1),
     )
-    out = {name: np.empty((len(imager.channels), *shape), dtype=np.float32) for name in RESULTS}
-    zenith = np.empty(shape, dtype=np.float32)
+    sun = _Sunlight.of(scene, view, settings, tables.wavenumber)
+    sunlit = sunlit_optics(tables.wavenumber, sun.irradiance, settings.ice_habit, settings.solar_streams)
+    out = {name: np.empty((len(imager.channels), *shape), dtype=np.float32) for name in _FIELDS}
+    zenith, solar_zenith = np.empty(shape, dtype=np.float32), np.empty(shape, dtype=np.float32)
     counts = {}
     rows = max(1, _COLUMNS_AT_ONCE // max(1, int(np.prod(shape[1:]))))
     for start in range(0, shape[0], rows):
         piece = slice(start, min(start + rows, shape[0]))
         slab = scene.isel({dims[0]: piece}).load()
-        results, angles = _solve_slab(slab, imager, view, settings, emissivity, tables, optics, dims, counts, piece)
-        for name, values in zip(RESULTS, results):
+        results, angles = _solve_slab(
+            slab, imager, view, settings, emissivity, tables, optics, sunlit, sun, dims, counts, piece
+        )
+        for name, values in results.items():
             out[name][:, piece] = values
-        zenith[piece] = angles
+        zenith[piece], solar_zenith[piece] = angles
         if progress is not None:
             progress(piece.stop * int(np.prod(shape[1:])), int(np.prod(shape)))
     if not (zenith < view.largest_zenith).any():
@@ -129,7 +136,25 @@ def simulate(scene, imager="tarn", *, channels=None, view="nadir", settings=None
             f"{float(scene['longitude'].min()):.1f} to {float(scene['longitude'].max()):.1f} degrees east; choose a "
             "sub-satellite longitude near its middle"
         )
-    return _as_dataset(scene, imager, view, settings, out, zenith, dims, counts, atlas)
+    return _as_dataset(scene, imager, view, settings, out, (zenith, solar_zenith), dims, counts, atlas, sun)
+
+
+def _check_settings(settings):
+    for name, value, known in (
+        ("cloud overlap", settings.overlap, OVERLAPS),
+        ("solver", settings.solver, SOLVERS),
+        ("sunlight", settings.sunlight, SUNLIGHT),
+    ):
+        if value not in known:
+            raise SceneError(f"unknown {name} {value!r}; use one of {', '.join(known)}")
+    for name, value, most, usual in (
+        ("streams", settings.streams, 16, 2),
+        ("solar_streams", settings.solar_streams, 16, 8),
+    ):
+        if not 1 <= value <= most:
+            raise SceneError(f"{name} {value}: give 1 to {most} for each half-sphere ({usual} is the default)")
+    if settings.subcolumns < 1:
+        raise SceneError(f"subcolumns {settings.subcolumns}: at least 1 is needed (20 is the default)")
 
 
 def _horizontal(scene):
@@ -213,7 +238,10 @@ def _reference(slab, dims, count, given):
 
 
 def _clouds(slab, settings, dims, count, levels, pressure, temperature, counts):
-    """Mixing ratios, ln effective radii (species, columns, levels) and cloud fraction (columns, levels)."""
+    """Mixing ratios, ln effective radii (species, columns, levels), cloud fraction (columns, levels), size doubts.
+
+    The last are two (columns,) bool: a radius at the edge of the tables, a radius that the model does not give.
+    """
     mixing = np.zeros((len(SPECIES), count, levels))
     for s, name in enumerate(SPECIES):
         values = _profiles(slab, name, dims, count)
@@ -240,7 +268,25 @@ def _clouds(slab, settings, dims, count, levels, pressure, temperature, counts):
         settings.ice_radius,
         counts,
     )
-    return mixing, np.log(radius), fraction
+    return (mixing, np.log(radius), fraction), _size_doubts(mixing, fraction, radius, fields)
+
+
+def _size_doubts(mixing, fraction, radius, fields):
+    """Columns with an effective radius at the edge of the tables, and with one that the model does not give."""
+    there = (mixing > 0.0) & (fraction > 0.0)
+    clamped = np.zeros(mixing.shape[1], dtype=bool)
+    parametrised = np.zeros(mixing.shape[1], dtype=bool)
+    for s, species in enumerate(SPECIES):
+        first, step, size = radius_axis(species)
+        edges = np.exp(first), np.exp(first + step * (size - 1))
+        clamped |= (there[s] & ((radius[s] <= edges[0]) | (radius[s] >= edges[1]))).any(axis=1)
+        phase = species.removeprefix("cloud_")
+        known = np.zeros(there[s].shape, dtype=bool)
+        for name in (f"effective_radius_{phase}", f"number_{phase}"):
+            if fields.get(name) is not None:
+                known |= fields[name] > 0.0
+        parametrised |= (there[s] & ~known).any(axis=1)
+    return clamped, parametrised
 
 
 def _fraction_everywhere(mixing, fraction, counts):
@@ -260,7 +306,78 @@ def _fraction_everywhere(mixing, fraction, counts):
     return np.where(falling, np.where(above > 0.0, above, 1.0), fraction)
 
 
-def _solve_slab(slab, imager, view, settings, emissivity, tables, optics, dims, counts, piece):
+@dataclass(frozen=True)
+class _Sunlight:
+    """Where the sun stands and what it sends.
+
+    irradiance : (nodes,) [mW m-2 (cm-1)-1], 0 below 2000 cm-1 or without sunlight; note : for the record
+    """
+
+    irradiance: np.ndarray
+    note: str
+
+    @classmethod
+    def of(cls, scene, view, settings, wavenumber):
+        """For the nodes of all channels [cm-1]."""
+        nothing = np.zeros(wavenumber.size)
+        shortwave = wavenumber >= SHORTWAVE
+        if not shortwave.any():
+            return cls(nothing, "no channel below 5 um")
+        if settings.sunlight == "none":
+            return cls(nothing, "left out on request: night everywhere")
+        if settings.solver == "absorbing":
+            return cls(nothing, "left out: the absorbing solver does not scatter")
+        time = _valid_time(scene)
+        given = hasattr(view, "solar") and view.solar(scene) is not None
+        if time is None and not given:
+            return cls(nothing, "left out: the scene has no valid time (night everywhere)")
+        factor = 1.0 if time is None else float(np.mean(solar_distance_factor(time)))
+        irradiance = np.zeros(wavenumber.size)
+        irradiance[shortwave] = solar_irradiance(wavenumber[shortwave]) * factor
+        return cls(irradiance, f"included, irradiance of ASTM E490-00 x {factor:.4f}")
+
+    def at(self, slab, view, zenith, dims, count):
+        """Sun of a slab: cosine of zenith angle, cosine of azimuth to imager, sea share, wind (columns,), zenith."""
+        dark = np.full(count, -1.0)
+        sea = 1.0 - np.clip(_columns(slab, "land_fraction", dims, count, 0.0), 0.0, 1.0)
+        if "surface_class" in slab:
+            sea = (slab["surface_class"].transpose(*dims).values.reshape(count) == 0).astype(float)
+        wind = _columns(slab, "wind_speed_10m", dims, count, 7.0)
+        if not self.irradiance.any():
+            return (dark, np.ones(count), sea, wind), np.full(count, np.nan)
+        angles = view.solar(slab) if hasattr(view, "solar") else None
+        if angles is None:
+            latitude, longitude = (_columns(slab, name, dims, count, np.nan) for name in ("latitude", "longitude"))
+            angles = solar_angles(_times(slab, dims, count), latitude, longitude)
+        solar_zenith, solar_azimuth = (np.asarray(a, dtype=float).reshape(count) for a in angles)
+        cosine = np.cos(np.radians(solar_zenith))
+        cosine = np.where(cosine > 1e-3, cosine, -1.0)  # at the horizon the term vanishes
+        if not (cosine > 0.0).any():
+            return (dark, np.ones(count), sea, wind), solar_zenith
+        azimuth = np.zeros(count)
+        if (zenith > 0.0).any():
+            imager = np.broadcast_to(view.azimuth(slab), tuple(slab.sizes[d] for d in dims)).reshape(count)
+            azimuth = relative_azimuth(imager, solar_azimuth)
+        return (cosine, np.cos(np.radians(azimuth)), sea, wind), solar_zenith
+
+
+def _valid_time(scene):
+    """The valid time or times of the scene, None where there is none."""
+    if "time" not in scene.coords or np.isnat(np.asarray(scene["time"].values, dtype="datetime64[ns]")).any():
+        return None
+    return scene["time"].values
+
+
+def _times(slab, dims, count):
+    time = slab["time"]
+    if time.ndim == 0:
+        return time.values
+    return np.broadcast_to(
+        time.broadcast_like(slab["latitude"]).transpose(*dims).values, tuple(slab.sizes[d] for d in dims)
+    ).reshape(count)
+
+
+def _solve_slab(slab, imager, view, settings, emissivity, tables, optics, sunlit, sun, dims, counts, piece):
     shape = tuple(slab.sizes[d] for d in dims)
     count = int(np.prod(shape))
     pressure = _profiles(slab, "pressure", dims, count)
@@ -283,6 +400,8 @@ def _solve_slab(slab, imager, view, settings, emissivity, tables, optics, dims, 
     )
     surface_emissivity = _emissivity(slab, imager, zenith, emissivity, dims, count, piece)
     results = np.full((len(RESULTS), len(imager.channels), count), np.nan)
+    sun_of_columns, solar_zenith = sun.at(slab, view, zenith, dims, count)
+    clouds, doubts = _clouds(slab, settings, dims, count, levels, pressure, temperature, counts)
     grid = (
         np.log(PRESSURES[0]),
         np.log(PRESSURES[1] / PRESSURES[0]),
@@ -300,8 +419,10 @@ def _solve_slab(slab, imager, view, settings, emissivity, tables, optics, dims, 
         ),
         surface,
         _reference(slab, dims, count, tables.gases),
-        _clouds(slab, settings, dims, count, levels, pressure, temperature, counts),
+        clouds,
         optics,
+        sunlit,
+        sun_of_columns,
         np.cos(np.radians(np.where(valid, zenith, 0.0))),
         surface_emissivity,
         (tables.table, grid, tables.wavenumber, tables.weight, tables.first),
@@ -312,9 +433,35 @@ def _solve_slab(slab, imager, view, settings, emissivity, tables, optics, dims, 
             SOLVERS[settings.solver],
         ),
         quadrature(settings.streams),
+        quadrature(settings.solar_streams),
         results,
     )
-    return results.reshape(len(RESULTS), len(imager.channels), *shape), zenith.reshape(shape)
+    fields = dict(zip(RESULTS, results))
+    _add_temperatures(fields, imager.channels)
+    fields["emission_pressure"] = np.empty_like(fields["brightness"])
+    emission_pressure(fields["brightness"], pressure, temperature, surface_pressure, fields["emission_pressure"])
+    fields["flags"] = quality_flags(
+        valid,
+        zenith,
+        solar_zenith,
+        fields["spread"],
+        np.array([c.node_wavenumber.max() >= SHORTWAVE for c in imager.channels]),
+        temperature,
+        pressure < surface_pressure[:, None],
+        *doubts,
+    )
+    return {name: fields[name].reshape(-1, *shape) for name in _FIELDS}, (
+        zenith.reshape(shape),
+        solar_zenith.reshape(shape),
+    )
+
+
+def _add_temperatures(fields, channels):
+    """Brightness temperatures and the spread of subcolumns, from radiance to K."""
+    for name, source in (("brightness", "radiance"), ("brightness_clear", "radiance_clear")):
+        fields[name] = np.stack([c.brightness_temperature(fields[source][i]) for i, c in enumerate(channels)])
+    more = np.stack([c.brightness_temperature(1.001 * fields["radiance"][i]) for i, c in enumerate(channels)])
+    fields["spread"] = fields["spread"] * (more - fields["brightness"]) / (0.001 * fields["radiance"])
 
 
 def _emissivity(slab, imager, zenith, given, dims, count, piece):
@@ -345,50 +492,76 @@ def _emissivity(slab, imager, zenith, given, dims, count, piece):
     return np.ascontiguousarray(values)
 
 
-_LONG_NAMES = {
-    "radiance": ("simulated radiance", "mW m-2 sr-1 (cm-1)-1", "toa_outgoing_radiance_per_unit_wavenumber"),
-    "brightness_temperature": ("simulated brightness temperature", "K", "toa_brightness_temperature"),
-    "brightness_temperature_clear": (
+# kernel or slab field -> name in the output, words, units, CF standard name
+_FIELDS = {
+    "radiance": ("radiance", "simulated radiance", "mW m-2 sr-1 (cm-1)-1", "toa_outgoing_radiance_per_unit_wavenumber"),
+    "radiance_solar": ("radiance_solar", "part of the radiance that is sunlight", "mW m-2 sr-1 (cm-1)-1", None),
+    "brightness": ("brightness_temperature", "simulated brightness temperature", "K", "toa_brightness_temperature"),
+    "brightness_clear": (
+        "brightness_temperature_clear",
         "the same without condensate",
         "K",
         "toa_brightness_temperature_assuming_clear_sky",
     ),
-    "surface_transmittance": ("transmittance from the surface to the top, condensate included", "1", None),
-    "cloud_optical_thickness": ("extinction optical thickness of all condensate, grid mean", "1", None),
-    "weighting_function_peak": ("pressure where transmittance changes most with ln p", "Pa", None),
+    "spread": ("subcolumn_spread", "standard deviation among subcolumns with different cloud", "K", None),
+    "transmittance": (
+        "surface_transmittance",
+        "transmittance from the surface to the top, absorption of condensate included",
+        "1",
+        None,
+    ),
+    "cloud_optical_thickness": (
+        "cloud_optical_thickness",
+        "extinction optical thickness of all condensate, grid mean",
+        "1",
+        None,
+    ),
+    "peak_pressure": (
+        "weighting_function_peak",
+        "pressure where transmittance changes most with ln p",
+        "Pa",
+        None,
+    ),
+    "peak_height": ("weighting_function_peak_height", "height of that level above mean sea level", "m", None),
+    "emission_pressure": (
+        "effective_emission_pressure",
+        "pressure where the air is as warm as the brightness temperature",
+        "Pa",
+        None,
+    ),
+    "flags": ("quality_flag", "what to be careful about", None, "quality_flag"),
 }
 
 
-def _as_dataset(scene, imager, view, settings, out, zenith, dims, counts, atlas):
-    channels = imager.channels
-    fields = {
-        "radiance": out["radiance"],
-        "surface_transmittance": out["transmittance"],
-        "cloud_optical_thickness": out["cloud_optical_thickness"],
-        "weighting_function_peak": out["peak_pressure"],
-    }
-    for name, source in (("brightness_temperature", "radiance"), ("brightness_temperature_clear", "radiance_clear")):
-        fields[name] = np.stack([c.brightness_temperature(out[source][i]) for i, c in enumerate(channels)])
-    mapping = "grid_mapping" if "grid_mapping" in scene else None
+def _as_dataset(scene, imager, view, settings, out, angles, dims, counts, atlas, sun):
+    mapping = {"grid_mapping": "grid_mapping"} if "grid_mapping" in scene else {}
     data = {}
-    for name, values in fields.items():
-        long_name, units, standard_name = _LONG_NAMES[name]
-        attributes = {"long_name": long_name, "units": units}
-        if standard_name:
-            attributes["standard_name"] = standard_name
-        if mapping:
-            attributes["grid_mapping"] = mapping
-        data[name] = (("channel", *dims), values.astype(np.float32), attributes)
-    data["view_zenith_angle"] = (
-        dims,
-        zenith,
-        {"long_name": "zenith angle of the imager", "units": "degree", "standard_name": "sensor_zenith_angle"},
+    for field_name, (name, long_name, units, standard_name) in _FIELDS.items():
+        attributes = {"long_name": long_name, "units": units, "standard_name": standard_name, **mapping}
+        attributes = {key: value for key, value in attributes.items() if value is not None}
+        data[name] = (("channel", *dims), out[field_name], attributes)
+    data["quality_flag"] = (
+        ("channel", *dims),
+        out["flags"].astype(np.int16),
+        {**data["quality_flag"][2], **flag_attributes()},
     )
+    data["cloud_effect"] = (
+        ("channel", *dims),
+        out["brightness"] - out["brightness_clear"],
+        {"long_name": "brightness temperature with condensate minus without", "units": "K", **mapping},
+    )
+    for name, values, body, standard_name in (
+        ("view_zenith_angle", angles[0], "imager", "sensor_zenith_angle"),
+        ("solar_zenith_angle", angles[1], "sun", "solar_zenith_angle"),
+    ):
+        if np.isfinite(values).any():
+            attributes = {"long_name": f"zenith angle of the {body}", "units": "degree", "standard_name": standard_name}
+            data[name] = (dims, values, {**attributes, **mapping})
     for name in ("land_fraction", "grid_mapping"):
         if name in scene:
             data[name] = scene[name]
-    result = xr.Dataset(data, coords=_coordinates(scene, channels, dims))
-    result.attrs = _record(scene, imager, view, settings, counts, atlas)
+    result = xr.Dataset(data, coords=_coordinates(scene, imager.channels, dims))
+    result.attrs = _record(scene, imager, view, settings, counts, atlas, sun)
     return result
 
 
@@ -417,7 +590,7 @@ def _coordinates(scene, channels, dims):
     return coordinates
 
 
-def _record(scene, imager, view, settings, counts, atlas):
+def _record(scene, imager, view, settings, counts, atlas, sun):
     """Global attributes: everything that is needed to make the output again."""
     attributes = {
         "Conventions": "CF-1.11, ACDD-1.3",
@@ -433,6 +606,8 @@ def _record(scene, imager, view, settings, counts, atlas):
         "date_created": datetime.datetime.now(datetime.UTC).strftime("%Y-%m-%dT%H:%M:%SZ"),
         "solver": settings.solver,
         "streams": settings.streams,
+        "solar_streams": settings.solar_streams,
+        "sunlight": sun.note,
         "cloud_overlap": settings.overlap,
         "subcolumns": settings.subcolumns,
         "decorrelation_length_m": settings.decorrelation_length,

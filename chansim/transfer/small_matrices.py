@@ -35,7 +35,7 @@ def symmetric_eigen(a, n, vectors):
             size += a[i, i] * a[i, i]
             for j in range(i):
                 off += a[i, j] * a[i, j]
-        if off <= 1e-30 * size:
+        if off <= 1e-26 * size:
             return
         for p in range(n - 1):
             for q in range(p + 1, n):

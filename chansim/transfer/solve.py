@@ -28,6 +28,8 @@ from chansim.transfer.absorbing import (
 from chansim.transfer.columns import build_levels, hydrostatic_heights, layer_amounts, layer_secants
 from chansim.transfer.overlap import fill_subcolumn
 from chansim.transfer.scattering import thermal_radiance
+from chansim.transfer.sunlight import clear_sunlight, cloudy_sunlight, toward_imager
+from chansim.transfer.sunlight import work_arrays as sunlight_work_arrays
 
 
 @njit(cache=True)
@@ -203,19 +205,28 @@ def cloud_layer_optics(path, log_radius, axis, extinction, albedo, asymmetry, fi
 
 
 @njit(cache=True)
-def peak_of_weighting_function(layers, level_p, profile):
-    """Pressure where -d(transmittance)/d(ln p) is largest [Pa]."""
-    best, where = -1.0, level_p[0]
+def peak_layer(layers, level_p, profile):
+    """Layer in which -d(transmittance)/d(ln p) is largest."""
+    best, where = -1.0, 0
     for j in range(layers):
         value = (profile[j] - profile[j + 1]) / math.log(level_p[j + 1] / level_p[j])
         if value > best:
-            best, where = value, math.sqrt(level_p[j] * level_p[j + 1])
+            best, where = value, j
     return where
 
 
 # what `solve_columns` returns for each channel and column, in order
 SOLVERS = {"absorbing": 0, "scattering": 1}  # what users may name
-RESULTS = ("radiance", "radiance_clear", "transmittance", "cloud_optical_thickness", "peak_pressure")
+RESULTS = (
+    "radiance",
+    "radiance_clear",
+    "transmittance",
+    "cloud_optical_thickness",
+    "peak_pressure",
+    "peak_height",
+    "radiance_solar",
+    "spread",
+)
 _BLOCK = 512  # columns of one task, which share one set of work arrays
 
 
@@ -265,8 +276,11 @@ def _absorbing_cloudy(
 
 
 @njit(cache=True)
-def _mixed_moments(layers, path, radius, inside, axis, extinction, albedo, moments, node, out):
-    """Legendre moments of the mixed condensate of each layer at one node: out (layers, moments)."""
+def _mixed_moments(layers, path, radius, inside, axis, extinction, albedo, moments, node, slot, out):
+    """Legendre moments of the mixed condensate of each layer: out (layers, moments).
+
+    node : of extinction and albedo; slot : the same node on the node axis of moments
+    """
     count = moments.shape[3]
     for j in range(layers):
         if not inside[j]:
@@ -282,7 +296,7 @@ def _mixed_moments(layers, path, radius, inside, axis, extinction, albedo, momen
                 part = path[j, s] * share * extinction[s, r + k, node] * albedo[s, r + k, node]
                 scattered += part
                 for degree in range(count):
-                    out[j, degree] += part * moments[s, r + k, node, degree]
+                    out[j, degree] += part * moments[s, r + k, slot, degree]
         for degree in range(count):
             out[j, degree] /= scattered
 
@@ -297,13 +311,62 @@ def _scattering_cloudy(
     quad, matrices, vectors, mixed, state = solver
     radiance = 0.0
     for i in range(last - first):
-        _mixed_moments(layers, path, radius, inside, axis, extinction, albedo, moments, first + i, mixed)
+        _mixed_moments(layers, path, radius, inside, axis, extinction, albedo, moments, first + i, first + i, mixed)
         radiance += weight[first + i] * thermal_radiance(
             tau[:layers, i], secant[:layers], cloud_tau[:layers, i], cloud_omega[:layers, i], mixed[:layers],
             planck_level[: layers + 1, i], bend[:layers, i], planck_surface[i], emissivity, 1.0, view_cosine, quad,
             (matrices, vectors), state
         )  # fmt: skip
     return radiance
+
+
+@njit(cache=True)
+def _mixed_phase(layers, path, radius, inside, axis, extinction, albedo, phase, node, slot, angle, share, out):
+    """Phase function of the mixed condensate of each layer at a scattering angle: out (layers,).
+
+    angle, share : the angle lies this share of the way beyond the tabulated one
+    """
+    for j in range(layers):
+        if not inside[j]:
+            continue
+        scattered = 0.0
+        out[j] = 0.0
+        for s in range(path.shape[1]):
+            if path[j, s] <= 0.0:
+                continue
+            r, w = particle_index(radius[j, s], axis[s, 0], axis[s, 1], int(axis[s, 2]))
+            for k in range(2):
+                part = path[j, s] * ((1.0 - w) if k == 0 else w) * extinction[s, r + k, node] * albedo[s, r + k, node]
+                scattered += part
+                at = phase[s, r + k, slot]
+                out[j] += part * (at[angle] * (1.0 - share) + at[angle + 1] * share)
+        out[j] /= scattered
+
+
+@njit(cache=True)
+def _sunlight_cloudy(
+    layers, tau, secant, cloud_tau, cloud_omega, path, radius, inside, optics, sunlit, geometry, ground, reflectance,
+    weight, first, last, solver
+):  # fmt: skip
+    """Channel radiance of sunlight for one subcolumn with condensate."""
+    axis, extinction, albedo, _, _ = optics
+    irradiance, slots, moments, phase, angles, _ = sunlit
+    quad, work, mixed, phases = solver
+    sun, azimuth, view = geometry
+    sines = math.sqrt(max(0.0, (1.0 - sun * sun) * (1.0 - view * view)))
+    turned = math.degrees(math.acos(min(max(-sun * view - sines * azimuth, -1.0), 1.0)))
+    angle = min(max(np.searchsorted(angles, turned) - 1, 0), angles.size - 2)
+    share = (turned - angles[angle]) / (angles[angle + 1] - angles[angle])
+    for i in range(last - first):
+        slot = slots[first + i]
+        _mixed_moments(layers, path, radius, inside, axis, extinction, albedo, moments, first + i, slot, mixed[i])
+        _mixed_phase(
+            layers, path, radius, inside, axis, extinction, albedo, phase, first + i, slot, angle, share, phases[i]
+        )
+    return cloudy_sunlight(
+        layers, tau, secant, cloud_tau, cloud_omega, mixed, phases, geometry, ground, reflectance, irradiance, weight,
+        first, last, quad, work
+    )  # fmt: skip
 
 
 @njit(cache=True)
@@ -367,22 +430,22 @@ def _cloud_of_subcolumn(layers, layer_cell, mask, cloudy, path, radius, optics, 
 
 
 @njit(cache=True)
-def _one_column(
-    c, atmosphere, surface, reference, cloud, optics, view_cosine, emissivity, tables, options, quad, work, results
-):
-    """Solve all channels of column c; see `solve_columns`."""
+def _column_state(c, atmosphere, surface, reference, cloud, view_cosine, table, grid, options, work):
+    """Levels, absorber amounts, condensate and subcolumns of column c into the work arrays.
+
+    Returns
+    -------
+    number of levels, number of different subcolumns (0: no condensate)
+    """
     pressure, temperature, humidity, gases, half_pressure = atmosphere
-    surface_pressure, air_temperature, air_humidity, skin_temperature, surface_height = surface
+    surface_pressure, air_temperature, air_humidity, _, surface_height = surface
     ref_pressure, ref_temperature, ref_gases = reference
     mixing, log_radius, fraction = cloud
-    table, grid, wavenumber, weight, firsts = tables
-    overlap, decorrelation_length, count, scattering = options
-    level_work, gas_work, clear_work, cloud_work, solver_work = work
+    overlap, decorrelation_length, count, _ = options
+    level_work, gas_work, _, cloud_work, _, _ = work
     points, level_p, level_t, level_x, level_z, layer_cell = level_work
     amount, effective_p, effective_t, corner, share, secant = gas_work
-    tau, planck_level, planck_surface, bend, state, profile, mean_profile = clear_work
-    cloudy, path, radius, fields, masks, portion, cell_height, slant, inside = cloud_work
-
+    cloudy, path, radius, _, masks, portion, cell_height, _, _ = cloud_work
     row = c if pressure.shape[0] > 1 else 0
     any_cloud = _cloudy_cells(mixing[:, c], fraction[c], pressure[row], surface_pressure[c], cloudy)
     levels = build_levels(
@@ -395,65 +458,146 @@ def _one_column(
     layer_amounts(levels, level_p, level_t, level_x, level_z, amount, effective_p, effective_t)
     table_positions(layers, effective_p, effective_t, grid, table, corner, share)
     layer_secants(levels, level_z, surface_height[c], view_cosine[c], secant)
-    different = 0
-    if any_cloud:
-        _layer_condensate(
-            layers, level_p, level_z, layer_cell, mixing[:, c], log_radius[:, c], fraction[c], path, radius
+    if not any_cloud:
+        return levels, 0
+    _layer_condensate(layers, level_p, level_z, layer_cell, mixing[:, c], log_radius[:, c], fraction[c], path, radius)
+    for j in range(layers):
+        if layer_cell[j] >= 0:
+            cell_height[layer_cell[j]] = level_z[j]
+    return levels, _subcolumn_masks(
+        cloudy.size, fraction[c], cell_height, overlap, decorrelation_length, count, masks, portion
+    )
+
+
+@njit(cache=True)
+def _clear_fields(c, channel, levels, surface, tables, work):
+    """Gas optical depths, Planck functions and source bends of one channel into the work arrays."""
+    table, _, wavenumber, _, firsts = tables
+    level_work, gas_work, clear_work, _, _, _ = work
+    _, level_p, level_t, _, _, _ = level_work
+    amount, _, _, corner, share, _ = gas_work
+    tau, planck_level, planck_surface, bend, _, _, _ = clear_work
+    first, last = firsts[channel], firsts[channel + 1]
+    gas_optical_depth(levels - 1, amount, corner, share, table, first, last, tau)
+    level_planck(levels, level_t, wavenumber, first, last, planck_level)
+    source_bends(levels - 1, level_p, level_t, tau, planck_level, wavenumber, first, last, bend)
+    for i in range(first, last):
+        planck_surface[i - first] = planck_scalar(wavenumber[i], surface[3][c])
+
+
+@njit(cache=True)
+def _ground_for_sun(c, first, last, sun, sunlit, view_cosine, reflectance, ground):
+    """Bidirectional reflectance of the ground at the nodes of a channel; False where there is no sunlight."""
+    sun_cosine, azimuth_cosine, sea_share, wind_speed = sun
+    slots, index = sunlit[1], sunlit[5]
+    if not sun_cosine[c] > 0.0 or slots[first] < 0:
+        return False
+    for i in range(first, last):
+        ground[i - first] = toward_imager(
+            view_cosine[c], sun_cosine[c], azimuth_cosine[c], wind_speed[c], index[slots[i]], sea_share[c], reflectance
         )
-        for j in range(layers):
-            if layer_cell[j] >= 0:
-                cell_height[layer_cell[j]] = level_z[j]
-        different = _subcolumn_masks(
-            cloudy.size, fraction[c], cell_height, overlap, decorrelation_length, count, masks, portion
-        )
+    return True
+
+
+@njit(cache=True)
+def _cloudy_radiance(
+    c, channel, levels, emissivity, optics, sunlit, sun, sunny, view_cosine, tables, scattering, quad, solar_quad, work
+):  # fmt: skip
+    """Thermal and solar radiance of the subcolumn whose condensate is in the work arrays."""
+    _, _, _, weight, firsts = tables
+    _, gas_work, clear_work, cloud_work, solver_work, solar_work = work
+    secant = gas_work[5]
+    tau, planck_level, planck_surface, bend, _, _, _ = clear_work
+    _, path, radius, fields, _, _, _, slant, inside = cloud_work
+    first, last, layers = firsts[channel], firsts[channel + 1], levels - 1
+    solar = 0.0
+    if not scattering:
+        return _absorbing_cloudy(
+            layers, tau, secant, fields[0], fields[1], planck_level, bend, planck_surface, emissivity, weight, first,
+            last, slant,
+        ), solar  # fmt: skip
+    thermal = _scattering_cloudy(
+        layers, tau, secant, fields[0], fields[1], path, radius, inside, optics, planck_level, bend, planck_surface,
+        emissivity, weight, first, last, view_cosine[c], (quad, *solver_work),
+    )  # fmt: skip
+    if sunny:
+        ground, arrays, mixed, phases = solar_work
+        solar = _sunlight_cloudy(
+            layers, tau, secant, fields[0], fields[1], path, radius, inside, optics, sunlit,
+            (sun[0][c], sun[1][c], view_cosine[c]), ground, 1.0 - emissivity, weight, first, last,
+            (solar_quad, arrays, mixed, phases),
+        )  # fmt: skip
+    return thermal, solar
+
+
+@njit(cache=True)
+def _one_column(
+    c, atmosphere, surface, reference, cloud, optics, sunlit, sun, view_cosine, emissivity, tables, options, quad,
+    solar_quad, work, results,
+):  # fmt: skip
+    """Solve all channels of column c; see `solve_columns`."""
+    _, _, _, weight, firsts = tables
+    scattering = options[3]
+    level_work, gas_work, clear_work, cloud_work, _, solar_work = work
+    level_p, level_z, layer_cell = level_work[1], level_work[4], level_work[5]
+    secant = gas_work[5]
+    tau, planck_level, planck_surface, bend, state, profile, mean_profile = clear_work
+    cloudy, path, radius, fields, masks, portion, _, _, inside = cloud_work
+    levels, different = _column_state(
+        c, atmosphere, surface, reference, cloud, view_cosine, tables[0], tables[1], options, work
+    )
+    layers = levels - 1
     for channel in range(firsts.size - 1):
         first, last = firsts[channel], firsts[channel + 1]
-        gas_optical_depth(layers, amount, corner, share, table, first, last, tau)
-        level_planck(levels, level_t, wavenumber, first, last, planck_level)
-        source_bends(layers, level_p, level_t, tau, planck_level, wavenumber, first, last, bend)
-        for i in range(first, last):
-            planck_surface[i - first] = planck_scalar(wavenumber[i], skin_temperature[c])
         e = emissivity[channel, c]
+        _clear_fields(c, channel, levels, surface, tables, work)
         clear = clear_channel(
             layers, tau, secant, planck_level, bend, planck_surface, e, weight, first, last, state, profile
         )
-        total, thickness = clear, 0.0
+        sunny = _ground_for_sun(c, first, last, sun, sunlit, view_cosine, 1.0 - e, solar_work[0])
+        clear_solar = 0.0
+        if sunny:
+            clear_solar = clear_sunlight(layers, tau, secant, sun[0][c], solar_work[0], sunlit[0], weight, first, last)
+            clear += clear_solar
+        total, total_solar, squares, thickness = clear, clear_solar, clear * clear, 0.0
         mean_profile[:levels] = profile[:levels]
-        if any_cloud:
-            total = 0.0
+        if different > 0:
+            total = total_solar = squares = 0.0
             mean_profile[:levels] = 0.0
         for m in range(different):
             if not _cloud_of_subcolumn(
                 layers, layer_cell, masks[m], cloudy, path, radius, optics, first, last, inside, fields
             ):
                 total += portion[m] * clear
+                total_solar += portion[m] * clear_solar
+                squares += portion[m] * clear * clear
                 mean_profile[:levels] += portion[m] * profile[:levels]
                 continue
             _cloudy_profile(layers, tau, secant, fields[0], fields[1], weight, first, last, state[3])
-            if scattering:
-                value = _scattering_cloudy(
-                    layers, tau, secant, fields[0], fields[1], path, radius, inside, optics, planck_level, bend,
-                    planck_surface, e, weight, first, last, view_cosine[c], (quad, *solver_work),
-                )  # fmt: skip
-            else:
-                value = _absorbing_cloudy(
-                    layers, tau, secant, fields[0], fields[1], planck_level, bend, planck_surface, e, weight, first,
-                    last, slant,
-                )  # fmt: skip
-            total += portion[m] * value
+            thermal, solar = _cloudy_radiance(
+                c, channel, levels, e, optics, sunlit, sun, sunny, view_cosine, tables, scattering, quad, solar_quad,
+                work,
+            )  # fmt: skip
+            total += portion[m] * (thermal + solar)
+            total_solar += portion[m] * solar
+            squares += portion[m] * (thermal + solar) ** 2
             mean_profile[:levels] += portion[m] * state[3, :levels]
             for j in range(layers):
                 for i in range(last - first):
                     thickness += portion[m] * weight[first + i] * fields[0][j, i]
+        peak = peak_layer(layers, level_p, mean_profile)
         results[0, channel, c] = total
         results[1, channel, c] = clear
         results[2, channel, c] = mean_profile[levels - 1]
         results[3, channel, c] = thickness
-        results[4, channel, c] = peak_of_weighting_function(layers, level_p, mean_profile)
+        results[4, channel, c] = math.sqrt(level_p[peak] * level_p[peak + 1])
+        results[5, channel, c] = 0.5 * (level_z[peak] + level_z[peak + 1])
+        results[6, channel, c] = total_solar
+        results[7, channel, c] = math.sqrt(max(squares - total * total, 0.0))
 
 
 @njit(cache=True)
-def _work_arrays(model_levels, ref_levels, gases, species, nodes, subcolumns, streams):
+def _work_arrays(model_levels, ref_levels, gases, species, nodes, sunlit_nodes, subcolumns, streams, solar_streams):
     """Work space of one task, in the groups that `_one_column` unpacks."""
     size = 2 * model_levels + ref_levels + 110
     source = model_levels + ref_levels + 2
@@ -470,36 +614,40 @@ def _work_arrays(model_levels, ref_levels, gases, species, nodes, subcolumns, st
                   np.zeros(model_levels), np.empty((2, size)), np.empty(size, dtype=np.bool_))  # fmt: skip
     solver_work = (np.zeros((20, streams, streams)), np.zeros((32, streams)), np.zeros((size, 2 * streams + 1)),
                    np.zeros(2))  # fmt: skip
-    return level_work, gas_work, clear_work, cloud_work, solver_work
+    solar_work = (np.empty(nodes), sunlight_work_arrays(solar_streams, size),
+                  np.zeros((sunlit_nodes, size, 2 * solar_streams + 1)), np.zeros((sunlit_nodes, size)))  # fmt: skip
+    return level_work, gas_work, clear_work, cloud_work, solver_work, solar_work
 
 
 @njit(cache=True, nogil=True)
 def _solve_range(
-    start, stop, valid, atmosphere, surface, reference, cloud, optics, view_cosine, emissivity, tables, options, quad,
-    results,
+    start, stop, valid, atmosphere, surface, reference, cloud, optics, sunlit, sun, view_cosine, emissivity, tables,
+    options, quad, solar_quad, results,
 ):  # fmt: skip
     """Columns start..stop - 1 of `solve_columns`; runs without the interpreter lock."""
     firsts = tables[4]
-    nodes = 0
+    nodes, sunlit_nodes = 0, 0
     for channel in range(firsts.size - 1):
         nodes = max(nodes, firsts[channel + 1] - firsts[channel])
+        if sunlit[1][firsts[channel]] >= 0:
+            sunlit_nodes = max(sunlit_nodes, firsts[channel + 1] - firsts[channel])
     work = _work_arrays(
-        atmosphere[1].shape[1], reference[0].size, atmosphere[3].shape[0], cloud[0].shape[0], nodes, options[2],
-        quad[0].size,
+        atmosphere[1].shape[1], reference[0].size, atmosphere[3].shape[0], cloud[0].shape[0], nodes, sunlit_nodes,
+        options[2], quad[0].size, solar_quad[0].size,
     )  # fmt: skip
     for c in range(start, stop):
         if valid[c]:
             _one_column(
-                c, atmosphere, surface, reference, cloud, optics, view_cosine, emissivity, tables, options, quad, work,
-                results,
+                c, atmosphere, surface, reference, cloud, optics, sunlit, sun, view_cosine, emissivity, tables,
+                options, quad, solar_quad, work, results,
             )  # fmt: skip
         else:
             results[:, :, c] = np.nan
 
 
 def solve_columns(
-    valid, atmosphere, surface, reference, cloud, optics, view_cosine, emissivity, tables, options, quad, results,
-    threads=None,
+    valid, atmosphere, surface, reference, cloud, optics, sunlit, sun, view_cosine, emissivity, tables, options, quad,
+    solar_quad, results, threads=None,
 ):  # fmt: skip
     """Solve many columns.
 
@@ -515,20 +663,24 @@ def solve_columns(
         cloud fraction (columns, L)
     optics : axis (S, 3), extinction [m2 kg-1], single-scattering albedo, asymmetry (S, radii, nodes), Legendre
         moments (S, radii, nodes, 2 streams + 1)
+    sunlit : see `chansim.optics.phase.sunlit_optics`
+    sun : cosine of the solar zenith angle (<= 0: no sunlight), cosine of the azimuth between imager and sun, share of
+        the surface that glints like the sea, wind speed at 10 m [m s-1]: (columns,) each
     view_cosine : (columns,) cosine of the view zenith angle at the surface
     emissivity : (channels, columns)
     tables : absorption table (P, T, slots, nodes) float32, its grid (ln first p, ln step, first T, step),
         wavenumber (nodes,), weight (nodes,), first node of each channel (channels + 1,)
     options : overlap (value of OVERLAPS), decorrelation length [m], number of subcolumns, 1 to scatter and 0 to
         absorb only
-    quad : streams of the scattering solver, see `scattering.quadrature`
+    quad, solar_quad : streams of the scattering solver and of its solar term, see `scattering.quadrature`
     results : (len(RESULTS), channels, columns), filled
     threads : worker threads; None = one for each processor
     """
     columns = valid.size
     threads = threads or os.cpu_count() or 1
     arguments = (
-        valid, atmosphere, surface, reference, cloud, optics, view_cosine, emissivity, tables, options, quad, results
+        valid, atmosphere, surface, reference, cloud, optics, sunlit, sun, view_cosine, emissivity, tables, options,
+        quad, solar_quad, results
     )  # fmt: skip
     size = max(1, min(_BLOCK, -(-columns // threads)))
     starts = range(0, columns, size)

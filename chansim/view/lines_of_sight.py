@@ -6,23 +6,30 @@ import numpy as np
 import xarray as xr
 
 from chansim.errors import ViewError
-from chansim.view.angles import LARGEST_ZENITH, geostationary_zenith
+from chansim.view.angles import LARGEST_ZENITH, geostationary_angles, geostationary_zenith
 
 
 @dataclass(frozen=True)
 class FixedZenith:
-    """The same zenith angle everywhere [degrees]; nadir is 0."""
+    """The same zenith angle everywhere [degrees]; nadir is 0. direction : azimuth to the imager [degrees]."""
 
     angle: float = 0.0
     largest_zenith: float = LARGEST_ZENITH
+    direction: float = 0.0
 
     def zenith(self, columns):
         """View zenith angle of the columns [degrees]."""
         return np.full(columns["latitude"].shape, self.angle)
 
+    def azimuth(self, columns):
+        """Azimuth of the direction to the imager, clockwise from north [degrees]."""
+        return np.full(columns["latitude"].shape, self.direction)
+
     def describe(self):
         """The view in words."""
-        return "nadir" if self.angle == 0.0 else f"zenith angle {self.angle:g} degrees everywhere"
+        if self.angle == 0.0:
+            return "nadir"
+        return f"zenith angle {self.angle:g} degrees everywhere, imager at azimuth {self.direction:g} degrees"
 
 
 @dataclass(frozen=True)
@@ -36,22 +43,49 @@ class Geostationary:
         """View zenith angle of the columns [degrees]; above 90 where the satellite is below the horizon."""
         return geostationary_zenith(columns["latitude"].values, columns["longitude"].values, self.longitude)
 
+    def azimuth(self, columns):
+        """Azimuth of the direction to the imager, clockwise from north [degrees]."""
+        return geostationary_angles(columns["latitude"].values, columns["longitude"].values, self.longitude)[1]
+
     def describe(self):
         """The view in words."""
         return f"geostationary, sub-satellite longitude {self.longitude:g} degrees east"
 
 
 @dataclass(frozen=True)
-class GivenZenith:
-    """Angles that the user brings, on the horizontal grid of the scene."""
+class GivenAngles:
+    """Angles that the user brings, on the horizontal grid of the scene.
 
-    angles: xr.DataArray
+    angles : Dataset with view_zenith_angle and, for sunlight, view_azimuth_angle (of the direction to the imager,
+        clockwise from north) and optionally solar_zenith_angle and solar_azimuth_angle [degrees]
+    """
+
+    angles: xr.Dataset
     largest_zenith: float = LARGEST_ZENITH
 
     def zenith(self, columns):
         """View zenith angle of the columns [degrees]."""
+        return self._of("view_zenith_angle", columns)
+
+    def azimuth(self, columns):
+        """Azimuth of the direction to the imager [degrees]. Raises ViewError when it is not given."""
+        if "view_azimuth_angle" not in self.angles:
+            raise ViewError(
+                "sunlight needs the azimuth of the imager: add view_azimuth_angle [degrees, clockwise from north, of "
+                "the direction from the pixel to the imager] to the view Dataset, or choose sunlight='none'"
+            )
+        return self._of("view_azimuth_angle", columns)
+
+    def solar(self, columns):
+        """Given solar zenith and azimuth angles [degrees], or None."""
+        names = ("solar_zenith_angle", "solar_azimuth_angle")
+        if not all(name in self.angles for name in names):
+            return None
+        return tuple(self._of(name, columns) for name in names)
+
+    def _of(self, name, columns):
         latitude = columns["latitude"]
-        angles = self.angles
+        angles = self.angles[name]
         for dim in latitude.dims:
             if dim in columns.coords and dim in angles.coords:
                 angles = angles.sel({dim: columns[dim]})
@@ -67,14 +101,14 @@ class GivenZenith:
 
     def describe(self):
         """The view in words."""
-        return "zenith angles given for each column"
+        return self.angles.attrs.get("view", "angles given for each column")
 
 
 def as_view(view):
     """A view object from what users write.
 
     view : "nadir", zenith angle [degrees], ("geostationary", longitude [degrees_east]), a Dataset with
-        `view_zenith_angle` [degrees], or a view object
+        `view_zenith_angle` [degrees] (see `GivenAngles`), or a view object
 
     Raises
     ------
@@ -85,7 +119,7 @@ def as_view(view):
     if isinstance(view, xr.Dataset):
         if "view_zenith_angle" not in view:
             raise ViewError("the view Dataset has no variable view_zenith_angle [degrees]")
-        return GivenZenith(view["view_zenith_angle"])
+        return GivenAngles(view)
     if isinstance(view, str) and view == "nadir":
         return FixedZenith(0.0)
     if isinstance(view, (int, float)) and not isinstance(view, bool):
