@@ -82,6 +82,38 @@ def test_size_average_against_brute_force():
     assert ours == pytest.approx(truth, rel=0.01)
 
 
+@pytest.mark.parametrize("species", ["cloud_liquid", "cloud_ice", "rain", "snow", "graupel"])
+def test_tables_between_their_wavenumbers(species):
+    # between the entries: where the indices bend (from a scan every 2.5 cm-1) and at a few unremarkable places
+    tables = pytest.importorskip("chansim.optics.build_tables")
+    between = [651, 755, 905, 925, 955, 967, 1021, 1045, 1215, 1390, 1492, 1551, 1587, 1612, 1637, 1667, 1695, 1725,
+               1742, 1755, 1785, 1811, 1850, 1911, 2127, 2222, 2445, 2597, 2702, 2705, 2761, 2778, 2855]  # fmt: skip
+    nodes = np.array(between, dtype=float)
+    assert not np.isin(nodes, tables.WAVENUMBERS).any()
+    s = condensate.SPECIES.index(species)
+    _, extinction, albedo, asymmetry = (a[s] if a.ndim > 2 else a for a in condensate.condensate_optics(nodes))
+    for i, nu in enumerate(nodes):
+        truth = _recomputed(species, nu)
+        ours = extinction[: truth[0].size, i], albedo[: truth[0].size, i], asymmetry[: truth[0].size, i]
+        np.testing.assert_allclose(ours[0], truth[0], rtol=0.015, err_msg=f"extinction at {nu}")
+        absorbed = truth[0] * (1.0 - truth[1])
+        np.testing.assert_allclose(ours[0] * (1.0 - ours[1]), absorbed, rtol=0.02, err_msg=f"absorption at {nu}")
+        np.testing.assert_allclose(ours[2], truth[2], atol=0.003, err_msg=f"asymmetry at {nu}")
+
+
+def _recomputed(species, nu):
+    """Extinction, albedo, asymmetry of all effective radii by Mie at one wavenumber [cm-1], without the tables."""
+    from chansim.optics import build_tables, mie
+
+    material, density, variance, effective, limits = build_tables.SPECIES[species]
+    radius = np.geomspace(*limits, 700)
+    size_parameter = 2.0 * math.pi * radius * nu * 1e-4
+    extinction, scattering, asymmetry = mie.sphere_efficiencies(complex(refractive_index(material, nu)), size_parameter)
+    weights, actual = mie.area_weights(radius, effective, variance)
+    bulk, scattered = weights @ extinction, weights @ scattering
+    return 0.75e6 * bulk / (density * actual), scattered / bulk, weights @ (scattering * asymmetry) / scattered
+
+
 def test_optical_thickness_of_large_drops():
     # tau = 3 LWP / (2 rho r_e) where the extinction efficiency is 2 (e.g. Stephens 1978, J. Atmos. Sci. 35)
     _, extinction, _, _ = condensate.condensate_optics(np.array([2700.0]))
