@@ -43,10 +43,19 @@ def liquid_fixed(content, land_fraction):
     return np.broadcast_to(13e-6 - 5e-6 * land_fraction, np.shape(content)).copy()
 
 
+WYSER_B = (-6.0, -2.0)  # where the published cubic gives 10.5 to 103.5 um; below -6.95 it is negative
+
+
 def ice_wyser_1998(content, temperature):
-    """Wyser 1998 (J. Climate 11, 1793), eq. 14: from content and temperature [m]."""
+    """Wyser 1998 (J. Climate 11, 1793), eq. 14: from content and temperature [m].
+
+    B = -2 + 1e-3 (273 - T)**1.5 log10(IWC / 50 g m-3), r_e = 377.4 + 203.3 B + 37.91 B**2 + 2.3696 B**3 um.
+    Valid for B within `WYSER_B`, 10.5 to 103.5 um, and held there: -2 is reached at 273 K, -6 only by traces of
+    ice in very cold air (less than 2e-5 g m-3 at 200 K).
+    """
     grams = np.maximum(content * 1e3, 1e-9)
     b = -2.0 + 1e-3 * np.maximum(273.0 - temperature, 0.0) ** 1.5 * np.log10(grams / 50.0)
+    b = np.clip(b, *WYSER_B)
     return 1e-6 * (377.4 + b * (203.3 + b * (37.91 + 2.3696 * b)))
 
 
