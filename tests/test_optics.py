@@ -219,7 +219,7 @@ def test_ice_radii_are_possible_everywhere():
     assert (growth >= -1e-12).all()
 
 
-def _radii(mixing, temperature=280.0, fields=None, liquid="fixed", ice="sun-2001", fraction=1.0, flags=None):
+def _radii(mixing, temperature=280.0, fields=None, liquid="fixed", ice="sun-2001", fraction=1.0, **more):
     """Effective radii of a (species, columns, levels) mixing ratio at 900 hPa over sea, and the counts."""
     counts, shape = {}, mixing.shape[1:]
     radius = condensate.effective_radii(
@@ -233,7 +233,7 @@ def _radii(mixing, temperature=280.0, fields=None, liquid="fixed", ice="sun-2001
         liquid,
         ice,
         counts,
-        flags,
+        **more,
     )
     return radius, {name: number for name, number in counts.items() if number}
 
@@ -254,6 +254,36 @@ def test_radius_from_the_models_number():
     mixing[0] = 2e-4
     radius, _ = _radii(mixing, fields={"number_liquid": np.array([[1e8]])})
     assert radius[0, 0, 0] * 1e6 == pytest.approx(8.4194, rel=1e-4)
+
+
+@pytest.mark.parametrize(
+    "habit, by_hand",
+    [
+        # 5e-5 kg/kg of ice in 1e5 crystals per kg: 5e-10 kg each, r_v = cbrt(3 x 5e-10 / (4 pi 917)) = 50.680 um,
+        # / cbrt(0.8) = 54.593 um
+        ("equal-volume-to-area", 54.593),
+        # side 1, length 5: V = 12.9904, A = 35.1962: 3 V / A = 1.10726, cbrt(3 V / 4 pi) = 1.45829, ratio 0.75928
+        ("hexagonal-column", 41.452),
+        # side 1, length 0.4: V = 1.03923, A = 7.59615: 0.41043, 0.62836, ratio 0.65318
+        ("hexagonal-plate", 35.659),
+    ],
+)
+def test_habit_gives_the_radius_of_counted_crystals(habit, by_hand):
+    mixing = np.zeros((5, 1, 1))
+    mixing[1] = 5e-5
+    radius, _ = _radii(mixing, 230.0, {"number_ice": np.array([[1e5]])}, ice_habit=habit)
+    assert radius[1, 0, 0] * 1e6 == pytest.approx(by_hand, rel=1e-4)
+    # parametrised radii are those of the papers whatever the habit, and the tables are the same
+    assert _radii(mixing, 230.0, ice_habit=habit)[0][1, 0, 0] == _radii(mixing, 230.0)[0][1, 0, 0]
+    for a, b in zip(
+        condensate.condensate_optics(np.array([900.0]), habit), condensate.condensate_optics(np.array([900.0]))
+    ):
+        np.testing.assert_array_equal(a, b)
+
+
+def test_unknown_habit_of_the_radii():
+    with pytest.raises(OpticsError, match="snowflake.*hexagonal-column"):
+        _radii(np.zeros((5, 1, 1)), ice_habit="snowflake")
 
 
 def test_all_species_are_clamped_and_counted():

@@ -288,6 +288,37 @@ def test_files_without_or_with_too_many_such_fields(tmp_path):
         cloud_boundaries(tmp_path / "two.nc")
 
 
+def test_the_solver_sees_the_same_optical_thickness_and_temperature(scene):
+    # mean extinction of the packaged tables over the channel, in units of efficiency 2: droplets of 10 um, ice of 30 um
+    liquid, ice = _extinction_in_ir104(0, 10e-6, 1000.0), _extinction_in_ir104(1, 30e-6, 917.0)
+    assert 0.9 < liquid < 1.1 and 0.95 < ice < 1.15
+    top, base = boundaries(290.0, 310.0)
+    top[0], base[0] = 84000.0, 86000.0
+    top[1], base[1] = NAN, NAN
+    thin = chansim.simulate(with_inferred_cloud(scene, top, base, optical_thickness=2.0), "tarn", channels=["ir104"])
+    thickness = thin["cloud_optical_thickness"].values[0, :, 0]
+    assert thickness[0] == pytest.approx(2.0 * liquid, rel=5e-3)
+    assert thickness[1] == 0.0
+    assert thickness[2] == pytest.approx(2.0 * ice, rel=5e-3)
+    opaque = chansim.simulate(with_inferred_cloud(scene, top, base), "tarn", channels=["ir104"])
+    picture, clear = (opaque[n].values[0, :, 0] for n in ("brightness_temperature", "brightness_temperature_clear"))
+    assert picture[1] == pytest.approx(clear[1], abs=1e-3)
+    # the cell of 300 hPa begins at 245 hPa, the air there is colder than at the level itself, 229 K
+    at_level = float(scene["temperature"][3, 2, 0])
+    assert at_level - 12.0 < picture[2] < at_level < clear[2] - 30.0
+
+
+def _extinction_in_ir104(species, radius, density):
+    """Extinction of the tables over 1.5 / (density x radius), mean over the nodes of the channel [1]."""
+    from chansim.optics.condensate import condensate_optics
+
+    channel = chansim.load_imager("tarn", ["ir104"]).channels[0]
+    axis, extinction, _, _ = condensate_optics(channel.node_wavenumber)
+    position = (np.log(radius) - axis[species, 0]) / axis[species, 1]
+    at = [np.interp(position, np.arange(len(row)), row) for row in extinction[species].T]
+    return np.average(at, weights=channel.node_weight) / (1.5 / (density * radius))
+
+
 @needs_real
 def test_real_file():
     top, base = cloud_boundaries(REAL)
@@ -303,3 +334,21 @@ def test_real_file():
     first = cloudy["pressure"].values[np.argmax(water > 0.0, axis=0)]
     there = (water.sum(axis=0) > 0.0) & (top.values > 1e4)
     assert np.abs(first - top.values)[there].max() < 5001.0
+
+
+def test_lazy_scene_gives_the_same():
+    lazy = with_inferred_cloud(open_scene(pressure_level_file().chunk({"lat": 1})), *boundaries(400.0, 800.0))
+    assert lazy["specific_humidity"].chunks
+    eager = with_inferred_cloud(open_scene(pressure_level_file()), *boundaries(400.0, 800.0))
+    for name in ("cloud_liquid", "cloud_ice", "specific_humidity"):
+        np.testing.assert_allclose(lazy[name].values, eager[name].values, rtol=1e-6)
+
+
+def test_half_levels_of_the_scene_are_used(scene):
+    pressure = scene["pressure"].values
+    half = np.concatenate([[4000.0], 0.5 * (pressure[1:] + pressure[:-1]), [101000.0]])
+    scene["half_pressure"] = ("half_level", half)
+    cloudy = with_inferred_cloud(scene, *boundaries(480.0, 520.0), optical_thickness=6.0).isel(lat=0, lon=0)
+    # 500 hPa: 400 to 600 hPa of air, 2039.43 kg m-2
+    tau = 150.0 * float(cloudy["cloud_liquid"].sum()) + 1.5 / (917.0 * 30e-6) * float(cloudy["cloud_ice"].sum())
+    assert tau * 2039.43 == pytest.approx(6.0, rel=1e-5)

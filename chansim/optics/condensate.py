@@ -14,14 +14,22 @@ from chansim.optics.particle_size import (
     PRECIPITATION,
     WATER_DENSITY,
     exponential_radius,
+    hexagonal_radius_ratio,
     volume_radius,
 )
 from chansim.optics.refractive_index import verified_bytes
 
 SPECIES = ("cloud_liquid", "cloud_ice", "rain", "snow", "graupel")
 # ice as spheres of equal volume-to-area ratio (Grenfell & Warren 1999, J. Geophys. Res. 104, 31697): the route
-# makes the optics a function of the effective radius alone, whatever the crystal shape
-HABITS = ("equal-volume-to-area",)
+# makes the optics a function of the effective radius alone. The habit decides what radius a crystal of known mass
+# has, i.e. only where the model gives the number of crystals: radius of equal V/A over that of equal volume.
+# Aspect ratios of columns and plates some 100 um wide: Auer & Veal 1970, J. Atmos. Sci. 27, 919, from memory
+_RADIUS_RATIO = {
+    "equal-volume-to-area": 1.0,  # compact crystals
+    "hexagonal-column": hexagonal_radius_ratio(2.5),
+    "hexagonal-plate": hexagonal_radius_ratio(0.2),
+}
+HABITS = tuple(_RADIUS_RATIO)
 CLAMPED, PARAMETRISED = 1, 2  # flags of `effective_radii`
 _DRY_AIR = 287.05  # J kg-1 K-1
 _NUMBER_TO_RADIUS = np.cbrt(1.0 / 0.8)  # effective over volume radius of a spectrum given by its number (as over sea)
@@ -108,7 +116,7 @@ def _at_nodes(name, wavenumber, most):
 
 
 def effective_radii(mixing, fraction, pressure, temperature, land_fraction, latitude, fields, liquid_radius, ice_radius,
-                    counts, flags=None):  # fmt: skip
+                    counts, flags=None, ice_habit=HABITS[0]):  # fmt: skip
     """Effective radius of every species in every cell; liquid and ice of a mixed cell each have their own.
 
     Parameters
@@ -123,6 +131,7 @@ def effective_radii(mixing, fraction, pressure, temperature, land_fraction, lati
     counts : dict, how many cells were clamped is added to it
     flags : None, or (species, columns, levels) uint8 that receives, for every cell, the sum of
         `CLAMPED` (the radius was outside the tables) and `PARAMETRISED` (it is not the model's own radius or number)
+    ice_habit : one of `HABITS`; it matters where the radius of ice comes from number_ice
 
     Returns
     -------
@@ -130,8 +139,9 @@ def effective_radii(mixing, fraction, pressure, temperature, land_fraction, lati
 
     Raises
     ------
-    OpticsError : unknown parametrisation
+    OpticsError : unknown parametrisation or habit
     """
+    _check_habit(ice_habit)
     for name, known in ((liquid_radius, LIQUID_RADIUS), (ice_radius, ICE_RADIUS)):
         if name not in known:
             raise OpticsError(f"unknown effective radius {name!r}; there is {', '.join(known)}")
@@ -148,10 +158,11 @@ def effective_radii(mixing, fraction, pressure, temperature, land_fraction, lati
         content = mixing[s][there] / fraction[there] * air
         if species == "cloud_liquid":
             value = LIQUID_RADIUS[liquid_radius](content, land[there])
-            value, own = _from_fields(value, content, there, air, fields, "liquid", WATER_DENSITY, fraction)
+            value, own = _from_fields(value, content, there, air, fields, "liquid", WATER_DENSITY, fraction, 1.0)
         elif species == "cloud_ice":
             value = ICE_RADIUS[ice_radius](content, temperature[there])
-            value, own = _from_fields(value, content, there, air, fields, "ice", ICE_DENSITY, fraction)
+            ratio = _RADIUS_RATIO[ice_habit]
+            value, own = _from_fields(value, content, there, air, fields, "ice", ICE_DENSITY, fraction, ratio)
         else:
             value, own = exponential_radius(content, *PRECIPITATION[species]), np.zeros(content.shape, dtype=bool)
         radius[s][there], clamped = _clamped(species, value, counts)
@@ -170,16 +181,18 @@ def _clamped(species, value, counts):
     return np.clip(value, low, high), outside
 
 
-def _from_fields(value, content, there, air, fields, phase, density, fraction):
-    """The model's own radius, else its number, where they are given; and where that is."""
+def _from_fields(value, content, there, air, fields, phase, density, fraction, ratio):
+    """The model's own radius, else its number, where they are given; and where that is.
+
+    ratio : of the radius of equal volume-to-area ratio to that of equal volume, for a radius from the number
+    """
     own = np.zeros(np.shape(value), dtype=bool)
     number = fields.get(f"number_{phase}")
     if number is not None:
         per_volume = number[there] * air / fraction[there]
         known = per_volume > 0.0
-        value = np.where(
-            known, volume_radius(content, np.where(known, per_volume, 1.0), density) * _NUMBER_TO_RADIUS, value
-        )
+        counted = volume_radius(content, np.where(known, per_volume, 1.0), density) * (_NUMBER_TO_RADIUS * ratio)
+        value = np.where(known, counted, value)
         own |= known
     given = fields.get(f"effective_radius_{phase}")
     if given is not None:

@@ -15,6 +15,19 @@ def volume_radius(content, number, density):
     return np.cbrt(3.0 * content / (4.0 * np.pi * density * number))
 
 
+def hexagonal_radius_ratio(aspect_ratio):
+    """Radius of equal volume-to-area ratio over radius of equal volume, of a hexagonal prism [1].
+
+    aspect_ratio : length over width (twice the side of the hexagon) [1]
+
+    For side 1: volume 3 sqrt(3) x aspect ratio, surface 3 sqrt(3) + 12 x aspect ratio; radii 3 V / A and
+    cbrt(3 V / (4 pi)). Source: geometry, as used by Neshyba, Grenfell & Warren 2003 (J. Geophys. Res. 108, 4448).
+    """
+    volume = 3.0 * np.sqrt(3.0) * aspect_ratio
+    surface = 3.0 * np.sqrt(3.0) + 12.0 * aspect_ratio
+    return 3.0 * volume / surface / np.cbrt(3.0 * volume / (4.0 * np.pi))
+
+
 def liquid_martin_1994(content, land_fraction):
     """Martin, Johnson & Spice 1994 (J. Atmos. Sci. 51, 1823): r_e = r_v / cbrt(k), k = 0.80 sea, 0.67 land [m].
 
