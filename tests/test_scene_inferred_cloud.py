@@ -161,7 +161,8 @@ def test_top_below_base(scene):
         ({"ice_radius": 0.0}, "ice_radius"),
         ({"upside_down": "swap"}, "upside_down"),
         ({"top_pressure": np.full((4, 3), 4e4)}, r"shape \(4, 3\)"),
-        ({"top_pressure": np.full((3, 4), 400.0), "base_pressure": np.full((3, 4), 800.0)}, "hPa"),
+        ({"top_pressure": np.full((3, 4), 400.0), "base_pressure": np.full((3, 4), 800.0)}, "hPa called Pa"),
+        ({"base_pressure": np.full((3, 4), 9.999e20)}, "undeclared fill value"),
         ({"top_pressure": xr.DataArray(np.full((3, 4), 4e4), dims=("y", "x"))}, "on the grid"),
     ],
 )

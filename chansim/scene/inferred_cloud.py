@@ -13,7 +13,7 @@ import xarray as xr
 
 from chansim.constants import STANDARD_GRAVITY
 from chansim.errors import SceneError
-from chansim.scene.checks import Tally
+from chansim.scene.checks import Tally, likely_cause
 from chansim.scene.grids import find_grid
 from chansim.scene.sources import open_source, refusing_damage
 from chansim.scene.units import convert, is_convertible
@@ -26,6 +26,7 @@ TOP_TEMPERATURE_TOLERANCE = 10.0  # K
 TOP_TEMPERATURE = "air_temperature_at_cloud_top"  # CF standard name, and the coordinate it goes by here
 _SAME_PLACE = 0.01  # degrees
 _LOWEST_CELL = 0.9995  # levels below this share of the surface pressure are not used by the solver
+_LARGEST = (1200.0, 1.2e5)  # Pa, between which the largest value of a field must lie
 _RADII = (1e-6, 5e-4)  # m, between which an effective radius of cloud is believed
 _PREFERRED_IDS = (54, 231045)  # GRIB: pressure; pressure at cloud base
 
@@ -189,10 +190,19 @@ def _on_columns(values, scene, dims, name):
     values = np.array(values, dtype=float)
     if values.shape != shape:
         raise SceneError(f"{name}: shape {values.shape}, but the scene has {dict(zip(dims, shape))}")
-    highest = np.nanmax(values, initial=0.0)
-    if 0.0 < highest < 1200.0 or highest > 1.2e5:
-        raise SceneError(f"{name}: largest value {highest:g}, in Pa; is its unit hPa? Set its attribute units")
-    return np.where(values > 0.0, values, np.nan)
+    values = np.where(values > 0.0, values, np.nan)
+    _check_pressure(values[np.isfinite(values)], name)
+    return values
+
+
+def _check_pressure(values, name):
+    """SceneError when the highest pressure of any cloud is not one in Pa."""
+    if values.size and not _LARGEST[0] <= values.max() <= _LARGEST[1]:
+        cause = likely_cause("Pa", values.min(), values.max(), 1.0, _LARGEST[1])
+        raise SceneError(
+            f"{name}: largest value {values.max():g} Pa, which is no pressure of cloud. Likely cause: {cause}. Give "
+            "Pa, or a DataArray with its true attribute units"
+        )
 
 
 def _check_grid(values, scene, dims, name):
