@@ -15,6 +15,19 @@ def volume_radius(content, number, density):
     return np.cbrt(3.0 * content / (4.0 * np.pi * density * number))
 
 
+def hexagonal_radius_ratio(aspect_ratio):
+    """Radius of equal volume-to-area ratio over radius of equal volume, of a hexagonal prism [1].
+
+    aspect_ratio : length over width (twice the side of the hexagon) [1]
+
+    For side 1: volume 3 sqrt(3) x aspect ratio, surface 3 sqrt(3) + 12 x aspect ratio; radii 3 V / A and
+    cbrt(3 V / (4 pi)). Source: geometry, as used by Neshyba, Grenfell & Warren 2003 (J. Geophys. Res. 108, 4448).
+    """
+    volume = 3.0 * np.sqrt(3.0) * aspect_ratio
+    surface = 3.0 * np.sqrt(3.0) + 12.0 * aspect_ratio
+    return 3.0 * volume / surface / np.cbrt(3.0 * volume / (4.0 * np.pi))
+
+
 def liquid_martin_1994(content, land_fraction):
     """Martin, Johnson & Spice 1994 (J. Atmos. Sci. 51, 1823): r_e = r_v / cbrt(k), k = 0.80 sea, 0.67 land [m].
 
@@ -43,10 +56,19 @@ def liquid_fixed(content, land_fraction):
     return np.broadcast_to(13e-6 - 5e-6 * land_fraction, np.shape(content)).copy()
 
 
+WYSER_B = (-6.0, -2.0)  # where the published cubic gives 10.5 to 103.5 um; below -6.95 it is negative
+
+
 def ice_wyser_1998(content, temperature):
-    """Wyser 1998 (J. Climate 11, 1793), eq. 14: from content and temperature [m]."""
+    """Wyser 1998 (J. Climate 11, 1793), eq. 14: from content and temperature [m].
+
+    B = -2 + 1e-3 (273 - T)**1.5 log10(IWC / 50 g m-3), r_e = 377.4 + 203.3 B + 37.91 B**2 + 2.3696 B**3 um.
+    Valid for B within `WYSER_B`, 10.5 to 103.5 um, and held there: -2 is reached at 273 K, -6 only by traces of
+    ice in very cold air (less than 2e-5 g m-3 at 200 K).
+    """
     grams = np.maximum(content * 1e3, 1e-9)
     b = -2.0 + 1e-3 * np.maximum(273.0 - temperature, 0.0) ** 1.5 * np.log10(grams / 50.0)
+    b = np.clip(b, *WYSER_B)
     return 1e-6 * (377.4 + b * (203.3 + b * (37.91 + 2.3696 * b)))
 
 

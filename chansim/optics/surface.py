@@ -5,6 +5,7 @@ Sea: Fresnel reflection averaged over the wave slopes of Cox & Munk 1954
 313): one reflection, facets weighted by what the imager sees of them.
 """
 
+import cmath
 import functools
 import math
 
@@ -17,6 +18,8 @@ from chansim.optics.refractive_index import refractive_index
 ZENITHS = np.concatenate([np.arange(0.0, 60.0, 5.0), np.arange(60.0, 86.0, 2.5)])  # degrees
 WINDS = np.array([0.0, 2.0, 4.0, 7.0, 10.0, 15.0, 20.0, 30.0])  # m s-1
 _SLOPES = 41
+_HORIZON = math.cos(math.radians(85.0))
+_DARK = 40.0  # slopes less likely than exp(-40) mirror nothing
 # spectral emissivity by class at some wavelengths; typical values of published spectral libraries, from memory:
 # vegetation and soil near 0.98, quartz sand dips at 8-9.5 um and below 4.5 um, snow and ice close to black
 _WAVELENGTHS_UM = np.array([3.5, 3.9, 4.5, 6.0, 7.5, 8.2, 8.6, 9.2, 9.7, 10.5, 11.2, 12.3, 13.3, 15.4])
@@ -134,24 +137,48 @@ def channel_emissivity(surface_class, land_fraction, zenith, wind_speed, channel
 
 @njit(cache=True)
 def glint_reflectance(view_cosine, sun_cosine, relative_azimuth, wind_speed, index_real, index_imaginary):
-    """Bidirectional reflectance of the wind-roughened sea [sr-1].
+    """Bidirectional reflectance of the wind-roughened sea [sr-1]; 0 when imager or sun is not above the horizon.
 
     Reflected radiance = this x solar irradiance on a plane across the beam x sun_cosine. Relative azimuth
-    [radians] is pi where imager and sun face each other (the specular direction).
+    [radians] is pi where imager and sun face each other (the specular direction). For many wavenumbers at one
+    place take `glint_facets` once and `fresnel_intensity` for each: this is their product.
 
     Source: Cox & Munk 1954; rho(incidence) P(slopes) / (4 cos(view) cos(sun) cos(tilt)**4).
     """
-    view_sine = math.sqrt(max(0.0, 1.0 - view_cosine * view_cosine))
-    sun_sine = math.sqrt(max(0.0, 1.0 - sun_cosine * sun_cosine))
-    cosine_angle = view_cosine * sun_cosine + view_sine * sun_sine * math.cos(relative_azimuth)
-    incidence = math.sqrt(max(0.0, 0.5 * (1.0 + cosine_angle)))
-    if incidence < 1e-6:
+    share, incidence = glint_facets(view_cosine, sun_cosine, relative_azimuth, wind_speed)
+    if share == 0.0:
         return 0.0
-    tilt = (view_cosine + sun_cosine) / (2.0 * incidence)
+    return share * fresnel_intensity(incidence, index_real, index_imaginary)
+
+
+@njit(cache=True)
+def glint_facets(view_cosine, sun_cosine, relative_azimuth, wind_speed):
+    """(P(slopes) / (4 cos(view) cos(sun) cos(tilt)**4) [sr-1], cosine of incidence) of the mirroring facets.
+
+    Within 5 degrees of the horizon waves hide each other, which is left out: the cosines of the denominator are
+    held at cos 85 degrees there. Arguments and source as for `glint_reflectance`.
+    """
+    if not (view_cosine > 0.0 and sun_cosine > 0.0):
+        return 0.0, 1.0
+    sines = (1.0 - view_cosine * view_cosine) * (1.0 - sun_cosine * sun_cosine)
+    cosine_angle = view_cosine * sun_cosine + math.sqrt(max(0.0, sines)) * math.cos(relative_azimuth)
+    squared = 0.5 * (1.0 + cosine_angle)  # cosine of incidence, squared
+    tilt_squared = (view_cosine + sun_cosine) ** 2 / (4.0 * max(squared, 1e-12))
     variance = 0.003 + 0.00512 * wind_speed
-    probability = math.exp(-(1.0 / tilt**2 - 1.0) / variance) / (math.pi * variance)
+    exponent = (1.0 / tilt_squared - 1.0) / variance
+    if exponent > _DARK:
+        return 0.0, 1.0
+    probability = math.exp(-exponent) / (math.pi * variance)
+    cosines = max(view_cosine, _HORIZON) * max(sun_cosine, _HORIZON)
+    return probability / (4.0 * cosines * tilt_squared * tilt_squared), math.sqrt(min(squared, 1.0))
+
+
+@njit(cache=True)
+def fresnel_intensity(cosine, index_real, index_imaginary):
+    """`fresnel_reflectance` of one angle, for compiled callers [1]."""
     index = complex(index_real, index_imaginary)
-    inside = (1.0 - (1.0 - incidence * incidence) / (index * index)) ** 0.5
-    vertical = abs((index * incidence - inside) / (index * incidence + inside)) ** 2
-    horizontal = abs((incidence - index * inside) / (incidence + index * inside)) ** 2
-    return 0.5 * (vertical + horizontal) * probability / (4.0 * view_cosine * sun_cosine * tilt**4)
+    inside = cmath.sqrt(index * index - (1.0 - cosine * cosine))  # index times the cosine inside
+    horizontal = (cosine - inside) / (cosine + inside)
+    steep = index * index * cosine
+    vertical = (steep - inside) / (steep + inside)
+    return 0.5 * (horizontal.real**2 + horizontal.imag**2 + vertical.real**2 + vertical.imag**2)
