@@ -112,7 +112,7 @@ def simulate(scene, imager="tarn", *, channels=None, view="nadir", settings=None
     )
     out = {name: np.empty((len(imager.channels), *shape), dtype=np.float32) for name in RESULTS}
     zenith = np.empty(shape, dtype=np.float32)
-    counts = {}
+    counts, masked = {}, 0
     rows = max(1, _COLUMNS_AT_ONCE // max(1, int(np.prod(shape[1:]))))
     for start in range(0, shape[0], rows):
         piece = slice(start, min(start + rows, shape[0]))
@@ -121,6 +121,7 @@ def simulate(scene, imager="tarn", *, channels=None, view="nadir", settings=None
         for name, values in zip(RESULTS, results):
             out[name][:, piece] = values
         zenith[piece] = angles
+        masked += int((~slab["column_valid"]).sum())
         if progress is not None:
             progress(piece.stop * int(np.prod(shape[1:])), int(np.prod(shape)))
     if not (zenith < view.largest_zenith).any():
@@ -129,6 +130,7 @@ def simulate(scene, imager="tarn", *, channels=None, view="nadir", settings=None
             f"{float(scene['longitude'].min()):.1f} to {float(scene['longitude'].max()):.1f} degrees east; choose a "
             "sub-satellite longitude near its middle"
         )
+    scene = scene.assign_attrs(masked_columns=masked)  # a lazy scene is not to be read again for it
     return _as_dataset(scene, imager, view, settings, out, zenith, dims, counts, atlas)
 
 
@@ -384,7 +386,7 @@ def _as_dataset(scene, imager, view, settings, out, zenith, dims, counts, atlas)
         zenith,
         {"long_name": "zenith angle of the imager", "units": "degree", "standard_name": "sensor_zenith_angle"},
     )
-    for name in ("land_fraction", "grid_mapping"):
+    for name in ("view_azimuth_angle", "land_fraction", "grid_mapping"):
         if name in scene:
             data[name] = scene[name]
     result = xr.Dataset(data, coords=_coordinates(scene, channels, dims))
@@ -443,7 +445,7 @@ def _record(scene, imager, view, settings, counts, atlas):
         "defaulted": str(scene.attrs.get("defaulted", "")),
         "adjusted": str(scene.attrs.get("adjusted", "")),
         "counted": "\n".join(f"{name}: {number}" for name, number in sorted(counts.items()) if number) or "nothing",
-        "masked_columns": int(np.sum(~scene["column_valid"].values)),
+        "masked_columns": scene.attrs["masked_columns"],
     }
     recognised = scene.attrs.get("recognised", "")
     attributes["recognised"] = recognised if isinstance(recognised, str) else "\n".join(recognised)

@@ -47,6 +47,7 @@ class GivenZenith:
 
     angles: xr.DataArray
     largest_zenith: float = LARGEST_ZENITH
+    words: str = "zenith angles given for each column"
 
     def zenith(self, columns):
         """View zenith angle of the columns [degrees]."""
@@ -67,7 +68,7 @@ class GivenZenith:
 
     def describe(self):
         """The view in words."""
-        return "zenith angles given for each column"
+        return self.words
 
 
 def as_view(view):
@@ -85,7 +86,8 @@ def as_view(view):
     if isinstance(view, xr.Dataset):
         if "view_zenith_angle" not in view:
             raise ViewError("the view Dataset has no variable view_zenith_angle [degrees]")
-        return GivenZenith(view["view_zenith_angle"])
+        words = "; ".join(str(view.attrs[name]) for name in ("view", "view_columns") if name in view.attrs)
+        return GivenZenith(view["view_zenith_angle"], words=words or GivenZenith.words)
     if isinstance(view, str) and view == "nadir":
         return FixedZenith(0.0)
     if isinstance(view, (int, float)) and not isinstance(view, bool):
