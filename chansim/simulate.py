@@ -386,6 +386,8 @@ def _as_dataset(scene, imager, view, settings, out, zenith, dims, counts, atlas)
         zenith,
         {"long_name": "zenith angle of the imager", "units": "degree", "standard_name": "sensor_zenith_angle"},
     )
+    if mapping:
+        data["view_zenith_angle"][2]["grid_mapping"] = mapping
     for name in ("view_azimuth_angle", "land_fraction", "grid_mapping"):
         if name in scene:
             data[name] = scene[name]

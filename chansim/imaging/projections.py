@@ -86,13 +86,45 @@ def read_grid(dataset, field="brightness_temperature"):
     grid = Grid(*(place.transpose(*dims).values for place in places))
     if len(dims) != 2:
         return grid
-    crs = _crs(dataset, field)
-    axes = [dataset[d] if d in dataset.coords else None for d in dims]
-    if crs is not None and all(a is not None and a.size > 1 for a in axes):
-        _set_projected(grid, crs, axes)
-    elif crs is None:
+    placed = plane_axes(dataset, field)
+    if placed is not None:
+        _set_projected(grid, *placed)
+    elif _crs(dataset, field) is None:
         _set_regular_degrees(grid)
     return grid
+
+
+def plane_axes(dataset, field="brightness_temperature"):
+    """The CRS of a result and where its rows and columns lie in it.
+
+    Parameters
+    ----------
+    dataset, field : see `read_grid`
+
+    Returns
+    -------
+    crs : pyproj.CRS
+    x, y : of the pixel centres along the last and the last but one dimension [m, or degrees where the CRS is in
+        degrees]; scan angles of a geostationary grid times the height of the satellite
+
+    None when the field names no grid mapping or has no such coordinates
+
+    Raises
+    ------
+    SceneError : a grid mapping that cannot be used
+    """
+    dims = [d for d in dataset[field].dims if d != "channel"]
+    crs = _crs(dataset, field)
+    axes = [dataset[d] if d in dataset.coords else None for d in dims]
+    if crs is None or len(dims) != 2 or not all(a is not None and a.size > 1 for a in axes):
+        return None
+    y, x = (a.values.astype(float) for a in axes)
+    mapping = crs.to_cf()
+    if mapping.get("grid_mapping_name") == "geostationary" and _in_radians(axes[0]):
+        y, x = (v * mapping["perspective_point_height"] for v in (y, x))
+    if not (np.all(np.isfinite(x)) and np.all(np.isfinite(y))):
+        return None
+    return crs, x, y
 
 
 def _crs(dataset, field):
@@ -107,13 +139,7 @@ def _crs(dataset, field):
         raise SceneError(f"cannot draw: the grid mapping '{name}' is not one that can be used ({error})") from error
 
 
-def _set_projected(grid, crs, axes):
-    y, x = (a.values.astype(float) for a in axes)
-    mapping = crs.to_cf()
-    if mapping.get("grid_mapping_name") == "geostationary" and _in_radians(axes[0]):
-        y, x = (v * mapping["perspective_point_height"] for v in (y, x))
-    if not (np.all(np.isfinite(x)) and np.all(np.isfinite(y))):
-        return
+def _set_projected(grid, crs, x, y):
     if crs.is_geographic and not crs.is_derived:
         middle = _middle(x)
         grid.projection, grid.x, grid.y = ccrs.PlateCarree(central_longitude=middle), x - middle, y
