@@ -61,8 +61,10 @@ def check_target(path, existing="keep"):
         raise OutputError(f"{path}: the folder {path.parent} is not writable")
 
 
-def write_dataset(dataset, path, existing="keep"):
+def write_dataset(dataset, path, existing="keep", *, unlimited=()):
     """Write a result to netCDF (.nc) or Zarr (.zarr) and return the path.
+
+    dataset : result; path : file or store; existing : "keep" or "replace"; unlimited : netCDF dimensions that may grow
 
     The data go to a temporary name in the same folder first and are renamed
     when complete; an interrupt leaves nothing behind. Raises OutputError.
@@ -79,7 +81,8 @@ def write_dataset(dataset, path, existing="keep"):
             with plain_strings():
                 dataset.to_zarr(temporary, mode="w", consolidated=False, encoding=encoding(dataset, ".zarr"))
         else:
-            dataset.to_netcdf(temporary, engine="netcdf4", encoding=encoding(dataset, ".nc"))
+            options = {"engine": "netcdf4", "encoding": encoding(dataset, ".nc")}
+            dataset.to_netcdf(temporary, unlimited_dims=list(unlimited), **options)
         if path.is_dir():
             shutil.rmtree(path)
         os.replace(temporary, path)
