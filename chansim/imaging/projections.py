@@ -1,5 +1,8 @@
 """The grid of a result as cartopy sees it: from CF grid mappings to projections."""
 
+import difflib
+import inspect
+import re
 from dataclasses import dataclass
 
 import cartopy.crs as ccrs
@@ -239,7 +242,8 @@ def target_projection(grid, projection):
     Parameters
     ----------
     grid : Grid
-    projection : "source" (latitude-longitude where the grid has none), "latlon", or a cartopy projection
+    projection : "source" (latitude-longitude where the grid has none), "latlon", the name of a cartopy projection
+        such as "orthographic", put over the middle of the grid, or a cartopy projection
 
     Returns
     -------
@@ -252,12 +256,63 @@ def target_projection(grid, projection):
     if isinstance(projection, ccrs.Projection):
         return projection
     if projection not in ("source", "latlon"):
-        raise ViewError(f"projection {projection!r}: use source, latlon or a cartopy projection")
+        return projection_by_name(str(projection), grid)
     if projection == "source" and grid.projection is not None:
         return grid.projection
     if isinstance(grid.projection, ccrs.PlateCarree):
         return grid.projection
     return ccrs.PlateCarree(central_longitude=middle_longitude(grid))
+
+
+def projection_names():
+    """{name in lower case: class} of the cartopy projections that need no more than a centre."""
+    names = {}
+    for name, kind in vars(ccrs).items():
+        if not (isinstance(kind, type) and issubclass(kind, ccrs.Projection)) or name.startswith("_"):
+            continue
+        parameters = list(inspect.signature(kind.__init__).parameters.values())[1:]
+        if inspect.isabstract(kind) or any(p.default is p.empty and p.kind not in (2, 4) for p in parameters):
+            continue
+        names[name.lower()] = kind
+    return names
+
+
+def projection_by_name(name, grid):
+    """A cartopy projection over the middle of a grid.
+
+    name : of a class in `cartopy.crs`, in any case, with or without spaces, - and _; grid : Grid
+
+    Raises
+    ------
+    ViewError : no such projection; the message tells the names that come near, or some of all
+    """
+    known = projection_names()
+    plain = re.sub(r"[\s_-]", "", name).lower()
+    if plain not in known:
+        near = difflib.get_close_matches(plain, known, n=4) or [n for n in _OFTEN_USED if n in known]
+        raise ViewError(
+            f"projection '{name}': not known; use source, latlon or the name of a cartopy projection, such as "
+            + ", ".join(near)
+        )
+    kind, options = known[plain], {}
+    accepted = inspect.signature(kind.__init__).parameters
+    latitude = grid.latitude[grid.on_earth]
+    middle = float(0.5 * (latitude.min() + latitude.max())) if latitude.size else 0.0
+    if "central_longitude" in accepted:
+        options["central_longitude"] = middle_longitude(grid)
+    if "central_latitude" in accepted:
+        options["central_latitude"] = middle
+    if "standard_parallels" in accepted and middle < 0.0:
+        options["standard_parallels"] = (-33.0, -45.0)
+        if "cutoff" in accepted:
+            options["cutoff"] = 30.0
+    return kind(**options)
+
+
+_OFTEN_USED = (
+    "orthographic", "mercator", "lambertconformal", "lambertazimuthalequalarea", "northpolarstereo",
+    "southpolarstereo", "robinson", "equalearth", "geostationary",
+)  # fmt: skip
 
 
 def middle_longitude(grid):
