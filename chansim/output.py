@@ -138,6 +138,7 @@ def cf_ready(dataset):
             if mapping:
                 attributes["grid_mapping"] = mapping
         dataset[name].attrs = attributes
+    _name_axes(dataset, dims, dataset[mapping].attrs.get("grid_mapping_name") if mapping else None)
     if "channel" in dataset.coords:
         dataset["channel"].attrs["standard_name"] = "sensor_band_identifier"
     if "time" in dataset.coords:
@@ -147,6 +148,24 @@ def cf_ready(dataset):
     dataset.attrs.setdefault("source", f"{dataset.attrs.get('model', 'model not named')}, simulated by {software}")
     dataset.attrs.setdefault("history", f"{dataset.attrs.get('date_created', '')} simulated by {software}".strip())
     return dataset
+
+
+def _name_axes(dataset, dims, projection):
+    """Standard names and units of the coordinates of rows and columns that tell none themselves."""
+    if len(dims) != 2:
+        return
+    words = {
+        "latitude_longitude": (("latitude", "degrees_north"), ("longitude", "degrees_east")),
+        "rotated_latitude_longitude": (("grid_latitude", "degrees"), ("grid_longitude", "degrees")),
+        "geostationary": tuple((f"projection_{axis}_angular_coordinate", "rad") for axis in "yx"),
+    }
+    plane = tuple((f"projection_{axis}_coordinate", "m") for axis in "yx")
+    for dim, axis, (name, units) in zip(dims, "yx", words.get(projection, plane)):
+        if dim not in dataset.coords or "standard_name" in dataset[dim].attrs:
+            continue
+        dataset[dim].attrs.setdefault("long_name", f"{axis} coordinate of the grid")
+        if projection is not None:
+            dataset[dim].attrs |= {"standard_name": name, "units": dataset[dim].attrs.get("units", units)}
 
 
 def _extent(dataset):
