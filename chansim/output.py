@@ -160,6 +160,8 @@ def _name_axes(dataset, dims, projection):
         "geostationary": tuple((f"projection_{axis}_angular_coordinate", "rad") for axis in "yx"),
     }
     plane = tuple((f"projection_{axis}_coordinate", "m") for axis in "yx")
+    if any(dim in dataset.coords and np.abs(dataset[dim].values).max() > 1.0 for dim in dims):
+        words.pop("geostationary")  # scan angles times height
     for dim, axis, (name, units) in zip(dims, "yx", words.get(projection, plane)):
         if dim not in dataset.coords or "standard_name" in dataset[dim].attrs:
             continue

@@ -4,6 +4,7 @@ import numpy as np
 import pyproj
 import pytest
 import xarray as xr
+from cf_checks import complaints
 from imaging_samples import MAPPINGS, make_result
 from satellite_samples import disk_picture, sector_picture
 from view_samples import scene_on
@@ -13,35 +14,11 @@ from chansim.errors import OutputError
 from chansim.output import cf_ready, write_dataset
 from chansim.view.fixed_grid import grid_of_file
 
-# what the checker of 2026 does not know: since CF-1.9 (appendix F) a geostationary grid has scan angles in rad
-_OLDER_RULE = "grid mapping geostationary requires exactly one variable with standard_name projection_"
-
 
 def as_simulated(kind):
     """A result by the whole way, on one of the kinds of model grids."""
     settings = chansim.Settings(solver="absorbing", subcolumns=1)
     return chansim.simulate(scene_on(kind, step=2.0), "tarn", channels=["ir104"], settings=settings)
-
-
-def complaints(path):
-    """What a general CF checker says of a file: (errors and warnings, without the outdated rule)."""
-    pytest.importorskip("compliance_checker", reason="needs compliance-checker, which the extra 'test' brings")
-    from compliance_checker.runner import CheckSuite
-
-    suite = CheckSuite()
-    suite.load_all_available_checkers()
-    dataset = suite.load_dataset(str(path))
-    scores, _ = suite.run_all(dataset, ["cf:1.11"])["cf:1.11"]
-    messages = []
-
-    def collect(results):
-        for result in results:
-            passed = result.value[0] == result.value[1] if isinstance(result.value, tuple) else bool(result.value)
-            messages.extend([] if passed else result.msgs or [])
-            collect(result.children or [])
-
-    collect(scores)
-    return [m for m in messages if not m.startswith(_OLDER_RULE)]
 
 
 @pytest.mark.parametrize("kind", ["sector", "disk", "regular", "lambert", "curvilinear", "cells"])

@@ -3,6 +3,7 @@
 import numpy as np
 import pytest
 import xarray as xr
+from cf_checks import complaints
 from satellite_samples import FAST
 from scene_samples import isobaric_messages, pressure_level_file, write_grib
 
@@ -91,6 +92,11 @@ def test_an_interrupt_loses_the_time_in_work_only(tmp_path, suffix):
     again = Interrupting(0)
     simulate_series(frames, path, again, existing="continue")
     assert again.calls == 0  # nothing is left to do
+
+
+def test_cf_checker_has_nothing_to_say_of_a_series(tmp_path):
+    frames = frames_of(model_file(HOURS[:2], [3, 5]), members=("number", [3, 5]))
+    assert not complaints(simulate_series(frames, tmp_path / "a.nc", picture))
 
 
 def test_continuing_without_a_beginning_begins(tmp_path):
