@@ -8,8 +8,9 @@ import warnings
 from pathlib import Path
 
 import numpy as np
+import xarray as xr
 
-from chansim.errors import OutputError
+from chansim.errors import ChansimError, OutputError
 
 EXISTING = ("keep", "replace")
 KEYWORDS = "satellite infrared imagery, brightness temperature, numerical weather prediction, simulation"
@@ -91,6 +92,25 @@ def write_dataset(dataset, path, existing="keep", *, unlimited=()):
     finally:
         shutil.rmtree(temporary.parent, ignore_errors=True)
     return path
+
+
+def open_result(path):
+    """A result of `chansim.simulate` or of a series, lazily.
+
+    path : .nc or .zarr
+
+    Raises
+    ------
+    ChansimError : it cannot be read, or is not such a result
+    """
+    try:
+        kind = {"engine": "zarr", "consolidated": False} if str(path).endswith(".zarr") else {"engine": "netcdf4"}
+        result = xr.open_dataset(path, **kind)
+    except (OSError, ValueError, RuntimeError) as error:
+        raise ChansimError(f"{path}: cannot be read as a result of 'chansim simulate' ({error})") from None
+    if "brightness_temperature" not in result or "channel" not in result.dims:
+        raise ChansimError(f"{path}: not a result of 'chansim simulate': it has no brightness_temperature by channel")
+    return result
 
 
 @contextlib.contextmanager

@@ -18,8 +18,8 @@ from chansim.view.footprint import add_noise, average_footprint, footprint_weigh
 from chansim.view.slant import scene_on_grid
 
 SUBPIXELS_AT_ONCE = 262144
-_FIELDS_OF_A_PIXEL = 8  # float32 for each channel and pixel while a picture is made
-_PLACES_OF_A_PIXEL = 80  # bytes: latitude, longitude, angles, and their copies
+_BYTES_OF_A_VALUE = 70.0  # for each channel and pixel: the fields of the solver, those of the result, and copies
+_BYTES_OF_A_PLACE = 80.0  # for each line of sight: latitude, longitude, angles, and copies
 
 
 @dataclass(frozen=True)
@@ -93,7 +93,7 @@ def memory_needed(grid, channel_count, subpixels=1):
     grid : FixedGrid; channel_count : number of channels; subpixels : along each side of a pixel
     """
     pixels = float(np.prod(grid.shape))
-    return pixels * (4.0 * _FIELDS_OF_A_PIXEL * channel_count + _PLACES_OF_A_PIXEL * subpixels**2)
+    return pixels * (_BYTES_OF_A_VALUE * channel_count + _BYTES_OF_A_PLACE * subpixels**2)
 
 
 def _check_subpixels(detector):

@@ -113,6 +113,7 @@ def simulate(scene, imager="tarn", *, channels=None, view="nadir", settings=None
     out = {name: np.empty((len(imager.channels), *shape), dtype=np.float32) for name in RESULTS}
     zenith = np.empty(shape, dtype=np.float32)
     counts, masked = {}, 0
+    carried = {n: np.empty(shape, np.float32) for n in ("view_azimuth_angle", "land_fraction") if n in scene}
     rows = max(1, _COLUMNS_AT_ONCE // max(1, int(np.prod(shape[1:]))))
     for start in range(0, shape[0], rows):
         piece = slice(start, min(start + rows, shape[0]))
@@ -122,6 +123,8 @@ def simulate(scene, imager="tarn", *, channels=None, view="nadir", settings=None
             out[name][:, piece] = values
         zenith[piece] = angles
         masked += int((~slab["column_valid"]).sum())
+        for name in carried:
+            carried[name][piece] = slab[name].transpose(*dims)
         if progress is not None:
             progress(piece.stop * int(np.prod(shape[1:])), int(np.prod(shape)))
     if not (zenith < view.largest_zenith).any():
@@ -130,7 +133,8 @@ def simulate(scene, imager="tarn", *, channels=None, view="nadir", settings=None
             f"{float(scene['longitude'].min()):.1f} to {float(scene['longitude'].max()):.1f} degrees east; choose a "
             "sub-satellite longitude near its middle"
         )
-    scene = scene.assign_attrs(masked_columns=masked)  # a lazy scene is not to be read again for it
+    # a lazy scene is not to be read again for these
+    scene = scene.assign({n: (dims, v, scene[n].attrs) for n, v in carried.items()}).assign_attrs(masked_columns=masked)
     return _as_dataset(scene, imager, view, settings, out, zenith, dims, counts, atlas)
 
 

@@ -44,20 +44,6 @@ def make_folder(folder):
         raise OutputError(f"{folder}: cannot make this folder ({error.strerror})") from None
 
 
-def open_result(path):
-    """A result of 'chansim simulate', lazily; ChansimError for anything else."""
-    import xarray as xr
-
-    try:
-        kind = {"engine": "zarr", "consolidated": False} if str(path).endswith(".zarr") else {"engine": "netcdf4"}
-        result = xr.open_dataset(path, **kind)
-    except (OSError, ValueError, RuntimeError) as error:
-        raise ChansimError(f"{path}: cannot be read as a result of 'chansim simulate' ({error})") from None
-    if "brightness_temperature" not in result or "channel" not in result.dims:
-        raise ChansimError(f"{path}: not a result of 'chansim simulate': it has no brightness_temperature by channel")
-    return result
-
-
 def add_moment_options(parser):
     """Options that choose from a result with several times or members."""
     parser.add_argument("--time", help="valid time, where the result holds several, e.g. 2026-06-21T12")

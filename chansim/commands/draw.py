@@ -9,7 +9,6 @@ from chansim.commands.common import (
     at_moment,
     existing_of,
     make_folder,
-    open_result,
     progress_bar,
     require_channels,
     split_list,
@@ -91,6 +90,7 @@ def draw_all(result, folder, colours, projection, existing, sheet):
 
 def _draw(options):
     from chansim.imaging.maps import draw_difference, draw_sheet, save_figure
+    from chansim.output import open_result
 
     existing, folder = existing_of(options), Path(options.folder)
     result = at_moment(open_result(options.file), options)
@@ -112,6 +112,7 @@ def _draw(options):
 
 def _animate(options):
     from chansim.imaging.animation import animate_channel
+    from chansim.output import open_result
 
     result = at_moment(open_result(options.file), options, keep_time=True)
     require_channels(result, [options.channel])
@@ -124,6 +125,7 @@ def _animate(options):
 
 def _geotiff(options):
     from chansim.geotiff import write_geotiff
+    from chansim.output import open_result
 
     result = at_moment(open_result(options.file), options)
     wanted = split_list(options.channels) or [str(c) for c in result["channel"].values]

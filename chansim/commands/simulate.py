@@ -9,7 +9,6 @@ from chansim.commands.common import (
     add_command,
     existing_of,
     make_folder,
-    open_result,
     progress_bar,
     split_list,
 )
@@ -173,6 +172,7 @@ def _tell_memory(grid, channels, subpixels):
 
 
 def _simulate_series(options, picture):
+    from chansim.output import open_result
     from chansim.series import frames_of, simulate_series
 
     if options.time is not None:
