@@ -78,6 +78,11 @@ def test_sheets_and_differences_of_a_sector():
     np.testing.assert_allclose(drawn[~drawn.mask], expected[np.isfinite(expected)], rtol=1e-6)
 
 
+def test_sheets_say_what_slate_blue_is():
+    texts = " ".join(t.get_text().replace("\n", " ") for t in draw_sheet(disk_picture()).texts)
+    assert "Slate blue lies outside the domain of the model" in texts
+
+
 def test_long_words_of_the_view_stay_on_the_paper():
     for figure in (draw_channel(sector_picture(), "ir104"), draw_sheet(sector_picture())):
         figure.canvas.draw()

@@ -3,6 +3,7 @@
 import numpy as np
 import pytest
 import xarray as xr
+import zarr
 from cf_checks import complaints
 from satellite_samples import FAST
 from scene_samples import isobaric_messages, pressure_level_file, write_grib
@@ -92,6 +93,17 @@ def test_an_interrupt_loses_the_time_in_work_only(tmp_path, suffix):
     again = Interrupting(0)
     simulate_series(frames, path, again, existing="continue")
     assert again.calls == 0  # nothing is left to do
+
+
+def test_a_time_that_was_half_written_is_made_again(tmp_path):
+    """As after a loss of power: values are there, but the time is not marked as done."""
+    path, frames = tmp_path / "a.zarr", frames_of(model_file())
+    with pytest.raises(KeyboardInterrupt):
+        simulate_series(frames, path, Interrupting(2))
+    zarr.open_group(path, mode="r+")["brightness_temperature"][1] = 7.0
+    simulate_series(frames, path, picture, existing="continue")
+    whole = simulate_series(frames, tmp_path / "b.zarr", picture)
+    xr.testing.assert_equal(opened(path), opened(whole))
 
 
 def test_cf_checker_has_nothing_to_say_of_a_series(tmp_path):

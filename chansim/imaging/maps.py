@@ -179,7 +179,9 @@ def draw_sheet(dataset, channels=None, *, projection="source", colours="auto", c
     left = _SHEET_GAP / width
     figure.text(left, 1 - 0.12 / height, "Simulated brightness temperature", ha="left", va="top", fontsize=13)
     figure.text(left, 1 - 0.44 / height, _subtitle(dataset, width), ha="left", va="top", fontsize=9)
-    figure.text(left, 0.10 / height, _small_print(shared, masked), ha="left", va="bottom", fontsize=7)
+    beyond = "  Slate blue lies outside the domain of the model." if shared.beyond.any() else ""
+    small = textwrap.fill(_small_print(shared, masked) + beyond, int(16.5 * (width - 2 * _SHEET_GAP)))
+    figure.text(left, 0.10 / height, small, ha="left", va="bottom", fontsize=7)
     return figure
 
 
@@ -190,7 +192,7 @@ def _sheet_layout(count, columns, aspect, dataset):
     """A figure, and one box for each panel, row by row."""
     columns = columns or int(np.clip(np.ceil(np.sqrt(count * aspect * 1.2)), 1, min(count, 5)))
     rows = -(-count // columns)
-    panel, above, below, foot = 3.6, 0.28, 0.50, 0.35  # inches
+    panel, above, below, foot = 3.6, 0.28, 0.50, 0.50  # inches
     step = (panel + _SHEET_GAP, panel * aspect + above + below)
     width = columns * step[0] + _SHEET_GAP
     head = 0.50 + 0.16 * (1 + _subtitle(dataset, width).count("\n"))
