@@ -158,6 +158,10 @@ def cf_ready(dataset):
             if mapping:
                 attributes["grid_mapping"] = mapping
         dataset[name].attrs = attributes
+    for name in ("latitude", "longitude"):
+        axis = [d for d in dims if d in dataset.coords and dataset[d].attrs.get("standard_name") == name and d != name]
+        if axis and name in dataset.coords:
+            dataset[name].attrs.pop("standard_name", None)  # the axis has it, and a file has room for one
     _name_axes(dataset, dims, dataset[mapping].attrs.get("grid_mapping_name") if mapping else None)
     if "channel" in dataset.coords:
         dataset["channel"].attrs["standard_name"] = "sensor_band_identifier"

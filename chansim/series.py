@@ -259,6 +259,7 @@ class _Store:
         with xr.open_dataset(self.store, engine="zarr", consolidated=False, chunks={}) as whole:
             for variable in whole.variables.values():
                 variable.encoding = {}
+            whole[_DONE].attrs["flag_values"] = np.array([0, 1], dtype=np.int8)  # Zarr keeps them as plain numbers
             write_dataset(whole, self.path, "replace" if self.existing != "keep" else "keep", unlimited=("time",))
         shutil.rmtree(self.store)
 
@@ -297,7 +298,10 @@ class _Store:
         coordinates = {n: c for n, c in result.drop_vars("time", errors="ignore").coords.items()}
         coordinates["time"] = ("time", self.times, {"standard_name": "time", "axis": "T"})
         if self.members:
-            coordinates["member"] = ("member", self.members, {"standard_name": "realization", "axis": "E"})
+            words = {"standard_name": "realization"}
+            if all(isinstance(member, int) for member in self.members):
+                words["units"] = "1"
+            coordinates["member"] = ("member", self.members, words)
         attributes = {n: v for n, v in result.attrs.items() if n not in (*_LISTED, _MASKED) and "coverage" not in n}
         whole = cf_ready(xr.Dataset(variables, coordinates, attrs=attributes))
         chosen = encoding(whole, ".zarr") | chosen
