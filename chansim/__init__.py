@@ -11,17 +11,22 @@ from chansim import _import_order  # noqa: F401, I001  (must stay first; see tha
 from chansim._version import __version__
 from chansim.channels.imager import load_imager
 from chansim.errors import ChansimError
+from chansim.output import open_result
+from chansim.satellite import Detector, simulate_on_grid
 from chansim.scene.profiles import scene_from_profile
 from chansim.scene.reading import describe_scene, open_scene
 from chansim.simulate import Settings, simulate
 
 __all__ = [
     "ChansimError",
+    "Detector",
     "Settings",
     "__version__",
     "describe_scene",
     "load_imager",
+    "open_result",
     "open_scene",
     "scene_from_profile",
     "simulate",
+    "simulate_on_grid",
 ]

@@ -117,7 +117,8 @@ def simulate(scene, imager="tarn", *, channels=None, view="nadir", settings=None
     sunlit = sunlit_optics(tables.wavenumber, sun.irradiance, settings.ice_habit, settings.solar_streams)
     out = {name: np.empty((len(imager.channels), *shape), dtype=np.float32) for name in _FIELDS}
     zenith, solar_zenith = np.empty(shape, dtype=np.float32), np.empty(shape, dtype=np.float32)
-    counts = {}
+    counts, masked = {}, 0
+    carried = {n: np.empty(shape, np.float32) for n in ("view_azimuth_angle", "land_fraction") if n in scene}
     rows = max(1, _COLUMNS_AT_ONCE // max(1, int(np.prod(shape[1:]))))
     for start in range(0, shape[0], rows):
         piece = slice(start, min(start + rows, shape[0]))
@@ -128,6 +129,9 @@ def simulate(scene, imager="tarn", *, channels=None, view="nadir", settings=None
         for name, values in results.items():
             out[name][:, piece] = values
         zenith[piece], solar_zenith[piece] = angles
+        masked += int((~slab["column_valid"]).sum())
+        for name in carried:
+            carried[name][piece] = slab[name].transpose(*dims)
         if progress is not None:
             progress(piece.stop * int(np.prod(shape[1:])), int(np.prod(shape)))
     if not (zenith < view.largest_zenith).any():
@@ -136,6 +140,8 @@ def simulate(scene, imager="tarn", *, channels=None, view="nadir", settings=None
             f"{float(scene['longitude'].min()):.1f} to {float(scene['longitude'].max()):.1f} degrees east; choose a "
             "sub-satellite longitude near its middle"
         )
+    # a lazy scene is not to be read again for these
+    scene = scene.assign({n: (dims, v, scene[n].attrs) for n, v in carried.items()}).assign_attrs(masked_columns=masked)
     return _as_dataset(scene, imager, view, settings, out, (zenith, solar_zenith), dims, counts, atlas, sun)
 
 
@@ -267,6 +273,7 @@ def _clouds(slab, settings, dims, count, levels, pressure, temperature, counts):
         settings.liquid_radius,
         settings.ice_radius,
         counts,
+        ice_habit=settings.ice_habit,
     )
     return (mixing, np.log(radius), fraction), _size_doubts(mixing, fraction, radius, fields)
 
@@ -557,7 +564,7 @@ def _as_dataset(scene, imager, view, settings, out, angles, dims, counts, atlas,
         if np.isfinite(values).any():
             attributes = {"long_name": f"zenith angle of the {body}", "units": "degree", "standard_name": standard_name}
             data[name] = (dims, values, {**attributes, **mapping})
-    for name in ("land_fraction", "grid_mapping"):
+    for name in ("view_azimuth_angle", "land_fraction", "grid_mapping"):
         if name in scene:
             data[name] = scene[name]
     result = xr.Dataset(data, coords=_coordinates(scene, imager.channels, dims))
@@ -618,7 +625,7 @@ def _record(scene, imager, view, settings, counts, atlas, sun):
         "defaulted": str(scene.attrs.get("defaulted", "")),
         "adjusted": str(scene.attrs.get("adjusted", "")),
         "counted": "\n".join(f"{name}: {number}" for name, number in sorted(counts.items()) if number) or "nothing",
-        "masked_columns": int(np.sum(~scene["column_valid"].values)),
+        "masked_columns": scene.attrs["masked_columns"],
     }
     recognised = scene.attrs.get("recognised", "")
     attributes["recognised"] = recognised if isinstance(recognised, str) else "\n".join(recognised)

@@ -41,7 +41,7 @@ def simulated(folder):
 
 
 def test_help_teaches():
-    for command in ([], ["demo"], ["simulate"], ["draw"], ["channel"], ["scene"]):
+    for command in ([], ["demo"], ["simulate"], ["draw"], ["animate"], ["geotiff"], ["channel"], ["scene"]):
         done = run(*command, "--help", cwd=ROOT)
         assert done.returncode == 0 and "chansim" in done.stdout and "exit codes" in done.stdout
         assert "official warnings" in done.stdout
@@ -94,6 +94,25 @@ def test_pictures(simulated, folder):
         (["simulate", "model.nc", "-o", "a.nc", "--zenith", "95"], "0 to 85"),
         (["simulate", "model.nc", "-o", "a.nc", "--geostationary", "180", "--channels", "ir104"], "sees no column"),
         (["channel", "model.nc"], "response"),
+        (["draw", "result.nc", "--projection", "orthografic"], "orthographic"),
+        (["draw", "result.nc", "--time", "2031-01-01"], "nothing is valid at 2031-01-01"),
+        (["draw", "result.nc", "--member", "1"], "has no members"),
+        (["animate", "result.nc", "--channel", "ir104", "-o", "a.gif"], "several times"),
+        (["geotiff", "result.nc", "-o", "no/such/a.tif"], "does not exist or is not writable"),
+        (["simulate", "model.nc", "-o", "a.nc", "--full-disk", "180", "--resolution", "200"], "sees no part"),
+        (["simulate", "model.nc", "-o", "a.nc", "--sector", "0"], "--resolution 3 (km)"),
+        (["simulate", "model.nc", "-o", "a.nc", "--sector", "0", "--resolution", "99", "--bounds", "-10,20"], "four"),
+        (
+            ["simulate", "model.nc", "-o", "a.nc", "--sector", "0", "--resolution", "99", "--bounds", "150,170,0,9"],
+            "outside the disk",
+        ),
+        (["simulate", "model.nc", "-o", "a.nc", "--zenith", "9", "--footprint", "2"], "--footprint: only for"),
+        (["simulate", "model.nc", "-o", "a.nc", "--like", "model.nc"], "grid_mapping_name"),
+        (["simulate", "model.nc", "-o", "a.nc", "--like", "none.nc"], "cannot be read as an image"),
+        (["simulate", "model.nc", "-o", "a.nc", "--sector", "0", "--resolution", "99", "--noise", "much"], "--noise"),
+        (["simulate", "model.nc", "-o", "a.nc", "--times", "2031-01-01"], "nothing is valid at 2031-01-01"),
+        (["simulate", "model.nc", "model.nc", "-o", "a.nc"], "is valid in model.nc and in model.nc"),
+        (["simulate", "model.nc", "-o", "a.nc", "--members", "number"], "DIMENSION=A,B"),
         (["scene", "result.txt"], "result.txt"),
     ],
 )
@@ -147,6 +166,80 @@ def test_interrupt_leaves_nothing_behind(tmp_path):
     _, error = process.communicate(timeout=300)
     assert process.returncode == 130, error
     assert "interrupted" in error and list(tmp_path.iterdir()) == []
+
+
+@pytest.fixture(scope="module")
+def series(folder):
+    """A series of three times on a fixed grid, made from one file."""
+    hours = [np.datetime64(f"2020-07-15T{h}:00", "ns") for h in (12, 15, 18)]
+    steps = [pressure_level_file().drop_vars("time") for _ in hours]
+    steps = [step.assign(T=step["T"] + np.float32(n)) for n, step in enumerate(steps)]
+    whole = xr.concat(steps, xr.DataArray(hours, dims="time", name="time"), data_vars="all")
+    for name in ("T", "Q", "PS"):
+        whole[name].attrs = pressure_level_file()[name].attrs
+    whole.to_netcdf(folder / "run.nc")
+    done = run(
+        "simulate", "run.nc", "--times", "all", "-o", "loop.zarr", "--channels", "ir104", "--sector", 0,
+        "--resolution", 150, "--sweep", "x", "--footprint", 2, cwd=folder,
+    )  # fmt: skip
+    assert done.returncode == 0, done.stderr
+    return done
+
+
+def test_series_on_a_fixed_grid(series, folder):
+    assert "3 of 3: 2020-07-15T18:00:00" in series.stderr and "times: 3, 2020-07-15T12" in series.stdout
+    result = xr.open_dataset(folder / "loop.zarr", engine="zarr", consolidated=False)
+    assert result.grid_mapping.attrs["sweep_angle_axis"] == "x" and result.sizes["time"] == 3
+    assert result.attrs["footprint"] == "2 x 2 sub-pixels, box"
+    assert run("simulate", "run.nc", "--times", "all", "-o", "loop.zarr", cwd=folder).returncode == 3
+    again = ["simulate", "run.nc", "--times", "all", "-o", "loop.zarr", "--continue"]
+    done = run(*again, "--channels", "ir104", "--sector", 0, "--resolution", 150, cwd=folder)
+    assert done.returncode == 0 and "1 of 3" not in done.stderr, done.stderr
+
+
+def test_pictures_of_a_series(series, folder):
+    done = run("draw", "loop.zarr", "--folder", "maps2", cwd=folder)
+    assert done.returncode == 1 and "choose one with --time" in done.stderr
+    done = run(
+        "draw", "loop.zarr", "--time", "2020-07-15T15", "--folder", "maps2", "--projection", "mercator", cwd=folder
+    )
+    assert done.returncode == 0 and (folder / "maps2" / "ir104.png").exists(), done.stderr
+    done = run("animate", "loop.zarr", "--channel", "ir104", "-o", "loop.gif", cwd=folder)
+    assert done.returncode == 0 and (folder / "loop.gif").read_bytes()[:6] == b"GIF89a", done.stderr
+    assert run("animate", "loop.zarr", "--channel", "ir104", "-o", "loop.gif", cwd=folder).returncode == 3
+
+
+def test_pixels_of_an_image_and_geotiff(series, folder):
+    pytest.importorskip("rasterio", reason="needs rasterio, the extra 'geotiff'")
+    done = run(
+        "simulate", "model.nc", "-o", "like.nc", "--like", "loop.zarr", "--channels", "ir104,wv063",
+        "--vertical-columns", "--noise", "ir104=0.5,wv063=0.1", "--bits", 10, cwd=folder,
+    )  # fmt: skip
+    assert done.returncode == 0, done.stderr
+    with xr.open_dataset(folder / "like.nc", engine="netcdf4") as result:
+        assert "ir104 0.5 K" in result.attrs["noise"] and "vertical columns" in result.attrs["view"]
+        loop = xr.open_dataset(folder / "loop.zarr", engine="zarr", consolidated=False)
+        np.testing.assert_array_equal(result.x, loop.x)
+    done = run("geotiff", "like.nc", "-o", "like.tif", "--channels", "ir104", cwd=folder)
+    assert done.returncode == 0 and "not an observation" in done.stdout, done.stderr
+    assert (folder / "like.tif").exists()
+
+
+def test_interrupted_series_continues(folder):
+    """As a user would: control-C, then the same call with --continue."""
+    call = [sys.executable, "-m", "chansim", "simulate", "run.nc", "--times", "all", "-o", "broken.zarr"]
+    process = subprocess.Popen(call, cwd=folder, stderr=subprocess.PIPE, stdout=subprocess.PIPE, text=True)
+    seen, start = "", time.time()
+    while "2 of 3" not in seen and time.time() - start < 300:
+        seen += process.stderr.read(1)
+    process.send_signal(signal.SIGINT)
+    _, error = process.communicate(timeout=300)
+    assert process.returncode == 130, error
+    assert "interrupted; 1 of 3 pictures of broken.zarr are done and kept" in error and "--continue" in error
+    done = run("simulate", "run.nc", "--times", "all", "-o", "broken.zarr", "--continue", cwd=folder)
+    assert done.returncode == 0 and "1 of 3" not in done.stderr and "3 of 3" in done.stderr, done.stderr
+    result = xr.open_dataset(folder / "broken.zarr", engine="zarr", consolidated=False)
+    assert np.isfinite(result.brightness_temperature).all()
 
 
 def test_demo(tmp_path):

@@ -17,7 +17,7 @@ def test_examples_run(tmp_path, monkeypatch, capsys):
     assert "exists and is kept" in capsys.readouterr().out
     made = {p.name for p in (tmp_path / "pictures").iterdir()}
     assert made == {"ir104.png", "cold_tops.png", "water_vapour.png", "sheet.png", "ir104-ir123.png", "from_space.png",
-                    "clear.png"}  # fmt: skip
+                    "clear.png", "disk.png", "loop.gif"}  # fmt: skip
     for picture in re.findall(r"\]\((pictures/\S+)\)", page):
         assert (PAGE.parent / picture).is_file(), picture
 

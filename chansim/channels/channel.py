@@ -36,6 +36,7 @@ _IMPORTANCE = np.array([1.0, 0.5, 0.35])  # of clear, reflecting and cloud-top s
 _BLACK_TEMPERATURES = np.linspace(185.0, 335.0, 16)  # K
 _BLACK_IMPORTANCE = 4.0  # against a training scene
 _RECIPE = "1"  # raise when the way of preparing changes, so that old cache files are not used
+_VALUES_AT_ONCE = 65536
 
 
 @dataclass(frozen=True)
@@ -90,18 +91,31 @@ class Channel:
 
     def radiance(self, temperature):
         """Channel radiance of a black body [mW m-2 sr-1 (cm-1)-1]; temperature [K], any shape."""
-        t = np.asarray(temperature, dtype=float)[..., None]
-        return planck(self.node_wavenumber, t) @ self.node_weight
+        return _in_blocks(lambda t: planck(self.node_wavenumber, t[..., None]) @ self.node_weight, temperature)
 
     def brightness_temperature(self, radiance):
         """Temperature of the black body with this channel radiance [K]; exact inverse of `radiance`."""
-        radiance = np.asarray(radiance, dtype=float)
+        return _in_blocks(self._brightness_temperature, radiance)
+
+    def _brightness_temperature(self, radiance):
         with np.errstate(divide="ignore", invalid="ignore"):
             t = (brightness_temperature(self.central_wavenumber, radiance) - self.band_offset) / self.band_slope
             for _ in range(3):
                 slope = planck_temperature_slope(self.node_wavenumber, t[..., None]) @ self.node_weight
                 t = t + (radiance - self.radiance(t)) / slope
         return np.where(radiance > 0, t, np.nan)
+
+
+def _in_blocks(function, values):
+    """A function of every value, block by block: it needs many times the memory of what it is given."""
+    values = np.asarray(values, dtype=float)
+    if values.size <= _VALUES_AT_ONCE:
+        return function(values)
+    flat, out = values.ravel(), np.empty(values.size)
+    for start in range(0, flat.size, _VALUES_AT_ONCE):
+        block = slice(start, start + _VALUES_AT_ONCE)
+        out[block] = function(flat[block])
+    return out.reshape(values.shape)
 
 
 def band_average(wavenumber, response, values):

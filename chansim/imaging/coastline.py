@@ -70,12 +70,21 @@ def lines_of_land(land_fraction, latitude, longitude):
 
     land = np.ma.masked_invalid(np.asarray(land_fraction, dtype=float))
     latitude, longitude = (np.asarray(degrees, dtype=float) for degrees in (latitude, longitude))
-    turned = np.unwrap(np.unwrap(longitude, period=360.0, axis=0), period=360.0, axis=1)
+    turned = _without_jumps(longitude)
     lines = []
     for column_row in contourpy.contour_generator(z=land).lines(0.5):
         where = column_row.T[::-1]
         lines.append(np.column_stack([map_coordinates(c, where, order=1) for c in (turned, latitude)]))
     return lines
+
+
+def _without_jumps(longitude):
+    """Longitude that goes on across the date line; NaN in space."""
+    if np.isfinite(longitude).all():
+        return np.unwrap(np.unwrap(longitude, period=360.0, axis=0), period=360.0, axis=1)
+    turns = np.radians(longitude[np.isfinite(longitude)])
+    middle = np.degrees(np.arctan2(np.sin(turns).mean(), np.cos(turns).mean()))
+    return middle + np.mod(longitude - middle + 180.0, 360.0) - 180.0
 
 
 def outlines(polygons):

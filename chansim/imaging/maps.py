@@ -17,7 +17,7 @@ from matplotlib.backends.backend_agg import FigureCanvasAgg
 from matplotlib.collections import LineCollection
 from matplotlib.colors import ListedColormap
 from matplotlib.figure import Figure
-from matplotlib.patches import Patch
+from matplotlib.patches import Patch, Rectangle
 from matplotlib.ticker import MaxNLocator
 
 from chansim.channels.imager import unknown_channel
@@ -33,7 +33,13 @@ COASTLINES = ("auto", "own", "natural-earth", "none")
 _FREEZING = 273.15  # K
 _COAST_COLOUR = "#e8b400"  # stands out on grey, blue and brown alike
 _MASK_COLOURS = ("#b4b4b4", "#6e6e6e")
-_SPACE_COLOUR = "white"
+_PAPER_COLOUR = "white"  # where the grid has no pixels
+_SPACE_COLOUR = "#0a0a0f"  # around the disk
+_LIMB_COLOUR = "#26262c"  # on the disk, seen at too grazing an angle
+_LIMB_LINE = "#c8c8c8"
+_BEYOND_COLOUR = "#5f6b7c"  # on the disk, outside the domain of the model
+_LABEL_COLOUR = "#8c8c8c"  # to be read on space and on paper
+_GRAZING = 85.0  # degrees from the zenith, from which there are no values
 _WIDTH = 9.0  # inches
 _CHARACTERS_PER_INCH = 14.5  # of the small type under the title
 
@@ -49,6 +55,13 @@ class _Map:
     raster: Raster
     coast: list
     coast_note: str
+    beyond: np.ndarray
+    limb: np.ndarray
+
+    @property
+    def from_space(self):
+        """True for a picture on its own geostationary grid."""
+        return self.projection is self.grid.projection and isinstance(self.projection, ccrs.Geostationary)
 
 
 def draw_channel(
@@ -79,13 +92,18 @@ def draw_channel(
     ViewError : the projection does not show the data
     ChansimError : unknown colours or coastline
     """
-    shared = _prepare(dataset, projection, coastline, field)
+    return figure_of_channel(prepare(dataset, projection, coastline, field), channel, colours, limits)
+
+
+def figure_of_channel(shared, channel, colours="auto", limits=None):
+    """What `draw_channel` draws, from a map that `prepare` has made; for many pictures of one grid."""
+    dataset, field = shared.dataset, shared.field
     values = channel_values(dataset, channel, field)
     limits = limits or temperature_range(_kind(dataset, channel))
     figure, axes = _figure_with_map(shared)
     masked = _draw_field(axes, shared, values, colour_map(colours, limits), limits)
     _draw_coast(axes, shared)
-    _draw_graticule(axes, shared.grid)
+    _draw_graticule(axes, shared)
     _draw_scale(figure, axes, values, "brightness temperature [K]", celsius="shown")
     words = "" if field == "brightness_temperature" else f", {_field_words(dataset, field)}"
     title = f"{channel_words(dataset, channel)}: simulated brightness temperature{words}"
@@ -111,14 +129,14 @@ def draw_difference(dataset, channel_a, channel_b, *, projection="source", limit
     ------
     see `draw_channel`
     """
-    shared = _prepare(dataset, projection, coastline, "brightness_temperature")
+    shared = prepare(dataset, projection, coastline, "brightness_temperature")
     values = channel_values(dataset, channel_a) - channel_values(dataset, channel_b)
     _require_values(values, f"{channel_a} minus {channel_b}")
     limit = limit or _round_limit(values)
     figure, axes = _figure_with_map(shared)
     masked = _draw_field(axes, shared, values, colour_map(DIFFERENCE_TABLE, (-limit, limit)), (-limit, limit))
     _draw_coast(axes, shared, colour="#303030")
-    _draw_graticule(axes, shared.grid)
+    _draw_graticule(axes, shared)
     _draw_scale(figure, axes, values, f"{channel_a} minus {channel_b} [K]", celsius="left out")
     first, second = channel_words(dataset, channel_a), channel_words(dataset, channel_b)
     _write_titles(figure, axes, f"{first} minus {second}: simulated difference", dataset)
@@ -143,13 +161,13 @@ def draw_sheet(dataset, channels=None, *, projection="source", colours="auto", c
     ------
     see `draw_channel`
     """
-    shared = _prepare(dataset, projection, coastline, "brightness_temperature")
+    shared = prepare(dataset, projection, coastline, "brightness_temperature")
     channels = [str(c) for c in (dataset["channel"].values if channels is None else channels)]
     if not channels:
         raise SceneError("cannot draw a sheet of no channels; name at least one")
     fields = [channel_values(dataset, channel) for channel in channels]
     masked = 0
-    figure, boxes = _sheet_layout(len(channels), columns, _aspect(shared))
+    figure, boxes = _sheet_layout(len(channels), columns, _aspect(shared), dataset)
     for channel, values, box in zip(channels, fields, boxes):
         axes = figure.add_axes(box, projection=shared.projection)
         limits = temperature_range(_kind(dataset, channel))
@@ -161,20 +179,24 @@ def draw_sheet(dataset, channels=None, *, projection="source", colours="auto", c
     left = _SHEET_GAP / width
     figure.text(left, 1 - 0.12 / height, "Simulated brightness temperature", ha="left", va="top", fontsize=13)
     figure.text(left, 1 - 0.44 / height, _subtitle(dataset, width), ha="left", va="top", fontsize=9)
-    figure.text(left, 0.10 / height, _small_print(shared, masked), ha="left", va="bottom", fontsize=7)
+    beyond = "  Slate blue lies outside the domain of the model." if shared.beyond.any() else ""
+    small = textwrap.fill(_small_print(shared, masked) + beyond, int(16.5 * (width - 2 * _SHEET_GAP)))
+    figure.text(left, 0.10 / height, small, ha="left", va="bottom", fontsize=7)
     return figure
 
 
 _SHEET_GAP = 0.25  # inches between panels and around them
 
 
-def _sheet_layout(count, columns, aspect):
+def _sheet_layout(count, columns, aspect, dataset):
     """A figure, and one box for each panel, row by row."""
     columns = columns or int(np.clip(np.ceil(np.sqrt(count * aspect * 1.2)), 1, min(count, 5)))
     rows = -(-count // columns)
-    panel, above, below, head, foot = 3.6, 0.28, 0.50, 0.75, 0.35  # inches
+    panel, above, below, foot = 3.6, 0.28, 0.50, 0.50  # inches
     step = (panel + _SHEET_GAP, panel * aspect + above + below)
-    width, height = columns * step[0] + _SHEET_GAP, head + rows * step[1] + foot
+    width = columns * step[0] + _SHEET_GAP
+    head = 0.50 + 0.16 * (1 + _subtitle(dataset, width).count("\n"))
+    height = head + rows * step[1] + foot
     figure = _new_figure((width, height))
     boxes = []
     for number in range(count):
@@ -213,12 +235,17 @@ def save_figure(figure, path, *, existing="keep", dpi=130):
     OutputError : the file exists and is kept, the folder is missing or not writable, unknown format
     """
     path = Path(path)
-    _check_target(figure, path, existing)
+    check_picture(path, existing, figure.canvas.get_supported_filetypes())
+    return write_whole(path, lambda temporary: figure.savefig(temporary, dpi=dpi))
+
+
+def write_whole(path, write):
+    """Lets `write` make a temporary file beside `path` and renames it when it is complete; OutputError."""
     handle, temporary = None, None
     try:
         handle, temporary = tempfile.mkstemp(prefix=f".{path.stem}-", suffix=path.suffix, dir=path.parent)
         os.close(handle)
-        figure.savefig(temporary, dpi=dpi)
+        write(temporary)
         os.chmod(temporary, 0o666 & ~_umask())
         os.replace(temporary, path)
         temporary = None
@@ -230,10 +257,11 @@ def save_figure(figure, path, *, existing="keep", dpi=130):
     return path
 
 
-def _check_target(figure, path, existing):
+def check_picture(path, existing, formats):
+    """Makes sure that a picture can be written there; OutputError."""
+    path = Path(path)
     if existing not in EXISTING:
         raise OutputError(f"existing={existing!r}: use one of {', '.join(EXISTING)}")
-    formats = figure.canvas.get_supported_filetypes()
     if path.suffix.lower().lstrip(".") not in formats:
         raise OutputError(f"{path}: the name must end in a picture format, .png for example ({', '.join(formats)})")
     if path.exists() and existing == "keep":
@@ -278,13 +306,25 @@ def _require_values(values, words):
         )
 
 
-def _prepare(dataset, projection, coastline, field):
+def prepare(dataset, projection="source", coastline="auto", field="brightness_temperature"):
+    """What all maps of a Dataset share: grid, projection, raster and coast; arguments as for `draw_channel`."""
     _require_result(dataset, field)
     grid = read_grid(dataset, field)
     projection = target_projection(grid, projection)
     raster = make_raster(grid, projection)
     lines, note = _coast_lines(dataset, grid, coastline)
-    return _Map(dataset, field, grid, projection, raster, lines, note)
+    return _Map(dataset, field, grid, projection, raster, lines, note, *_seen_past_the_model(dataset, field, grid))
+
+
+def _seen_past_the_model(dataset, field, grid):
+    """Which pixels of a satellite look past the domain of the model, and which graze the limb."""
+    nowhere = np.zeros(grid.latitude.shape, dtype=bool)
+    if not {"view_azimuth_angle", "view_zenith_angle", "land_fraction"} <= set(dataset.data_vars):
+        return nowhere, nowhere
+    dims = [d for d in dataset[field].dims if d != "channel"]
+    zenith, land = (dataset[name].transpose(*dims).values for name in ("view_zenith_angle", "land_fraction"))
+    limb = grid.on_earth & (zenith >= _GRAZING)
+    return grid.on_earth & ~np.isfinite(land) & ~limb, limb
 
 
 def _coast_lines(dataset, grid, coastline):
@@ -359,22 +399,40 @@ def _figure_with_map(shared):
 
 
 def _draw_field(axes, shared, values, colours, limits):
-    """Draws a field; returns how many pixels on the Earth have no value."""
+    """Draws a field; returns how many pixels within the domain of the model have no value."""
     raster = shared.raster
-    picture = raster.sample(values)
-    masked = int(np.count_nonzero(~np.isfinite(values) & shared.grid.on_earth))
+    masked = ~np.isfinite(values) & shared.grid.on_earth & ~shared.beyond & ~shared.limb
     place = {"extent": raster.extent, "origin": "upper", "interpolation": "nearest"}
     west, east, south, north = raster.extent
     axes.set_xlim(west, east)
     axes.set_ylim(south, north)
-    axes.set_facecolor(_SPACE_COLOUR)
-    if masked:
+    plain = _SPACE_COLOUR if shared.from_space else _PAPER_COLOUR
+    axes.set_facecolor(plain)
+    if shared.from_space:
+        _darken_space(axes)
+    limb_colour = _LIMB_COLOUR if shared.from_space else _PAPER_COLOUR
+    covers = [(shared.limb & ~np.isfinite(values), limb_colour), (shared.beyond, _BEYOND_COLOUR)]
+    if masked.any():
         axes.patch.set(facecolor=_MASK_COLOURS[0], edgecolor=_MASK_COLOURS[1], hatch="////", linewidth=0.0)
         # what the grid does not cover is not masked: it stays plain
-        cover = np.ma.masked_where(~raster.outside, raster.outside.astype(float))
-        _plain_imshow(axes, cover, cmap=ListedColormap([_SPACE_COLOUR]), **place)
-    _plain_imshow(axes, picture, cmap=colours, vmin=limits[0], vmax=limits[1], **place)
-    return masked
+        _cover(axes, raster.outside, plain, place)
+    for where, colour in covers:
+        if where.any():
+            _cover(axes, raster.sample(where).filled(0.0) > 0.0, colour, place)
+    _plain_imshow(axes, raster.sample(values), cmap=colours, vmin=limits[0], vmax=limits[1], **place)
+    return int(masked.sum())
+
+
+def _cover(axes, where, colour, place):
+    """Fills part of the raster with one colour."""
+    _plain_imshow(axes, np.ma.masked_where(~where, where.astype(float)), cmap=ListedColormap([colour]), **place)
+
+
+def _darken_space(axes):
+    """The rectangle of the axes around the disk; cartopy fills the disk alone."""
+    axes.spines["geo"].set(edgecolor=_LIMB_LINE, linewidth=0.6)
+    behind = Rectangle((0, 0), 1, 1, transform=axes.transAxes, facecolor=_SPACE_COLOUR, edgecolor="none", zorder=-5)
+    axes.figure.add_artist(behind)
 
 
 def _plain_imshow(axes, picture, **options):
@@ -402,8 +460,10 @@ def _draw_coast(axes, shared, width=0.8, colour=_COAST_COLOUR):
     axes.add_collection(LineCollection(pieces, colors=colour, linewidths=width, zorder=3), autolim=False)
 
 
-def _draw_graticule(axes, grid):
+def _draw_graticule(axes, shared):
     """Meridians and parallels at round degrees, labelled on the left and below."""
+    grid = shared.grid
+    space = shared.from_space and not grid.on_earth.all()  # labels may fall on it
     middle = middle_longitude(grid)
     places = grid.on_earth
     from_middle = np.mod(grid.longitude[places] - middle + 180.0, 360.0) - 180.0
@@ -414,7 +474,7 @@ def _draw_graticule(axes, grid):
                            x_inline=False, y_inline=False, xlocs=meridians, ylocs=parallels)  # fmt: skip
     lines.top_labels = lines.right_labels = False
     lines.rotate_labels = False
-    lines.xlabel_style = lines.ylabel_style = {"size": 8}
+    lines.xlabel_style = lines.ylabel_style = {"size": 8, "color": _LABEL_COLOUR if space else "black"}
 
 
 def _round_degrees(low, high):
@@ -458,13 +518,13 @@ def _subtitle(dataset, width):
     """Model, time, imager and view, on as many lines as a figure of this width [inches] needs."""
     parts = [f"model: {_model(dataset)}", _valid_time(dataset)]
     parts += [f"{word}: {dataset.attrs[word]}" for word in ("imager", "view") if dataset.attrs.get(word)]
-    lines = [parts[0]]
+    lines, room = [parts[0]], int(_CHARACTERS_PER_INCH * width)
     for part in parts[1:]:
         joined = f"{lines[-1]}   {part}"
-        if len(joined) <= _CHARACTERS_PER_INCH * width:
+        if len(joined) <= room:
             lines[-1] = joined
         else:
-            lines.append(part)
+            lines += textwrap.wrap(part, room, subsequent_indent="   ")
     return "\n".join(lines)
 
 
@@ -505,9 +565,13 @@ def _write_small_print(figure, axes, shared, masked):
     width, height = figure.get_size_inches()
     lines = textwrap.wrap(_small_print(shared, 0), int(16.5 * (width - 1.0)))
     figure.text(axes.get_position().x0, 0.10 / height, "\n".join(lines), fontsize=7, ha="left", va="bottom")
+    handles = []
+    if shared.beyond.any():
+        handles.append(Patch(facecolor=_BEYOND_COLOUR, label="outside the domain of the model"))
     if masked:
-        patch = Patch(facecolor=_MASK_COLOURS[0], edgecolor=_MASK_COLOURS[1], hatch="////",
-                      label=f"no value: {masked} masked pixels")  # fmt: skip
+        handles.append(Patch(facecolor=_MASK_COLOURS[0], edgecolor=_MASK_COLOURS[1], hatch="////",
+                             label=f"no value: {masked} masked pixels"))  # fmt: skip
+    if handles:
         above = (0.15 + 0.12 * len(lines)) / height
-        figure.legend(handles=[patch], loc="lower right", bbox_to_anchor=(1 - 0.3 / width, above), fontsize=7,
-                      frameon=False, borderaxespad=0.0)  # fmt: skip
+        figure.legend(handles=handles, loc="lower right", bbox_to_anchor=(1 - 0.3 / width, above), fontsize=7,
+                      frameon=False, borderaxespad=0.0, ncols=2)  # fmt: skip

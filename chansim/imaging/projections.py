@@ -1,5 +1,8 @@
 """The grid of a result as cartopy sees it: from CF grid mappings to projections."""
 
+import difflib
+import inspect
+import re
 from dataclasses import dataclass
 
 import cartopy.crs as ccrs
@@ -86,13 +89,45 @@ def read_grid(dataset, field="brightness_temperature"):
     grid = Grid(*(place.transpose(*dims).values for place in places))
     if len(dims) != 2:
         return grid
-    crs = _crs(dataset, field)
-    axes = [dataset[d] if d in dataset.coords else None for d in dims]
-    if crs is not None and all(a is not None and a.size > 1 for a in axes):
-        _set_projected(grid, crs, axes)
-    elif crs is None:
+    placed = plane_axes(dataset, field)
+    if placed is not None:
+        _set_projected(grid, *placed)
+    elif _crs(dataset, field) is None:
         _set_regular_degrees(grid)
     return grid
+
+
+def plane_axes(dataset, field="brightness_temperature"):
+    """The CRS of a result and where its rows and columns lie in it.
+
+    Parameters
+    ----------
+    dataset, field : see `read_grid`
+
+    Returns
+    -------
+    crs : pyproj.CRS
+    x, y : of the pixel centres along the last and the last but one dimension [m, or degrees where the CRS is in
+        degrees]; scan angles of a geostationary grid times the height of the satellite
+
+    None when the field names no grid mapping or has no such coordinates
+
+    Raises
+    ------
+    SceneError : a grid mapping that cannot be used
+    """
+    dims = [d for d in dataset[field].dims if d != "channel"]
+    crs = _crs(dataset, field)
+    axes = [dataset[d] if d in dataset.coords else None for d in dims]
+    if crs is None or len(dims) != 2 or not all(a is not None and a.size > 1 for a in axes):
+        return None
+    y, x = (a.values.astype(float) for a in axes)
+    mapping = crs.to_cf()
+    if mapping.get("grid_mapping_name") == "geostationary" and _in_radians(axes[0]):
+        y, x = (v * mapping["perspective_point_height"] for v in (y, x))
+    if not (np.all(np.isfinite(x)) and np.all(np.isfinite(y))):
+        return None
+    return crs, x, y
 
 
 def _crs(dataset, field):
@@ -107,13 +142,7 @@ def _crs(dataset, field):
         raise SceneError(f"cannot draw: the grid mapping '{name}' is not one that can be used ({error})") from error
 
 
-def _set_projected(grid, crs, axes):
-    y, x = (a.values.astype(float) for a in axes)
-    mapping = crs.to_cf()
-    if mapping.get("grid_mapping_name") == "geostationary" and _in_radians(axes[0]):
-        y, x = (v * mapping["perspective_point_height"] for v in (y, x))
-    if not (np.all(np.isfinite(x)) and np.all(np.isfinite(y))):
-        return
+def _set_projected(grid, crs, x, y):
     if crs.is_geographic and not crs.is_derived:
         middle = _middle(x)
         grid.projection, grid.x, grid.y = ccrs.PlateCarree(central_longitude=middle), x - middle, y
@@ -213,7 +242,8 @@ def target_projection(grid, projection):
     Parameters
     ----------
     grid : Grid
-    projection : "source" (latitude-longitude where the grid has none), "latlon", or a cartopy projection
+    projection : "source" (latitude-longitude where the grid has none), "latlon", the name of a cartopy projection
+        such as "orthographic", put over the middle of the grid, or a cartopy projection
 
     Returns
     -------
@@ -226,12 +256,63 @@ def target_projection(grid, projection):
     if isinstance(projection, ccrs.Projection):
         return projection
     if projection not in ("source", "latlon"):
-        raise ViewError(f"projection {projection!r}: use source, latlon or a cartopy projection")
+        return projection_by_name(str(projection), grid)
     if projection == "source" and grid.projection is not None:
         return grid.projection
     if isinstance(grid.projection, ccrs.PlateCarree):
         return grid.projection
     return ccrs.PlateCarree(central_longitude=middle_longitude(grid))
+
+
+def projection_names():
+    """{name in lower case: class} of the cartopy projections that need no more than a centre."""
+    names = {}
+    for name, kind in vars(ccrs).items():
+        if not (isinstance(kind, type) and issubclass(kind, ccrs.Projection)) or name.startswith("_"):
+            continue
+        parameters = list(inspect.signature(kind.__init__).parameters.values())[1:]
+        if inspect.isabstract(kind) or any(p.default is p.empty and p.kind not in (2, 4) for p in parameters):
+            continue
+        names[name.lower()] = kind
+    return names
+
+
+def projection_by_name(name, grid):
+    """A cartopy projection over the middle of a grid.
+
+    name : of a class in `cartopy.crs`, in any case, with or without spaces, - and _; grid : Grid
+
+    Raises
+    ------
+    ViewError : no such projection; the message tells the names that come near, or some of all
+    """
+    known = projection_names()
+    plain = re.sub(r"[\s_-]", "", name).lower()
+    if plain not in known:
+        near = difflib.get_close_matches(plain, known, n=4) or [n for n in _OFTEN_USED if n in known]
+        raise ViewError(
+            f"projection '{name}': not known; use source, latlon or the name of a cartopy projection, such as "
+            + ", ".join(near)
+        )
+    kind, options = known[plain], {}
+    accepted = inspect.signature(kind.__init__).parameters
+    latitude = grid.latitude[grid.on_earth]
+    middle = float(0.5 * (latitude.min() + latitude.max())) if latitude.size else 0.0
+    if "central_longitude" in accepted:
+        options["central_longitude"] = middle_longitude(grid)
+    if "central_latitude" in accepted:
+        options["central_latitude"] = middle
+    if "standard_parallels" in accepted and middle < 0.0:
+        options["standard_parallels"] = (-33.0, -45.0)
+        if "cutoff" in accepted:
+            options["cutoff"] = 30.0
+    return kind(**options)
+
+
+_OFTEN_USED = (
+    "orthographic", "mercator", "lambertconformal", "lambertazimuthalequalarea", "northpolarstereo",
+    "southpolarstereo", "robinson", "equalearth", "geostationary",
+)  # fmt: skip
 
 
 def middle_longitude(grid):

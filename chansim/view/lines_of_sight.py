@@ -62,6 +62,7 @@ class GivenAngles:
 
     angles: xr.Dataset
     largest_zenith: float = LARGEST_ZENITH
+    words: str = "angles given for each column"
 
     def zenith(self, columns):
         """View zenith angle of the columns [degrees]."""
@@ -101,7 +102,7 @@ class GivenAngles:
 
     def describe(self):
         """The view in words."""
-        return self.angles.attrs.get("view", "angles given for each column")
+        return self.words
 
 
 def as_view(view):
@@ -119,7 +120,8 @@ def as_view(view):
     if isinstance(view, xr.Dataset):
         if "view_zenith_angle" not in view:
             raise ViewError("the view Dataset has no variable view_zenith_angle [degrees]")
-        return GivenAngles(view)
+        words = "; ".join(str(view.attrs[name]) for name in ("view", "view_columns") if name in view.attrs)
+        return GivenAngles(view, words=words or GivenAngles.words)
     if isinstance(view, str) and view == "nadir":
         return FixedZenith(0.0)
     if isinstance(view, (int, float)) and not isinstance(view, bool):

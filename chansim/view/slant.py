@@ -106,7 +106,7 @@ def scene_on_grid(scene, grid, **options):
 
     Returns
     -------
-    xarray.Dataset, see `scene_on_pixels`, with the grid mapping of the fixed grid
+    xarray.Dataset, see `scene_on_pixels`, with the grid mapping of the fixed grid and its words as attribute `view`
 
     Raises
     ------
@@ -120,9 +120,10 @@ def scene_on_grid(scene, grid, **options):
             + in_words(scene["latitude"].values, scene["longitude"].values)
         )
     angles = pixels["view_zenith_angle"], pixels["view_azimuth_angle"]
-    return scene_on_pixels(
+    result = scene_on_pixels(
         scene, pixels["latitude"], pixels["longitude"], *angles, grid_mapping=grid.grid_mapping(), **options
     )
+    return result.assign_attrs(view=grid.describe())
 
 
 def _check_choice(name, value, choices):
