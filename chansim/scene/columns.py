@@ -11,7 +11,7 @@ import numpy as np
 from chansim.constants import MOLAR_MASS_DRY_AIR, STANDARD_GRAVITY
 from chansim.errors import SceneError
 from chansim.scene import humidity, hydrostatic
-from chansim.scene.checks import Place, Tally, check_pressure, check_relative_humidity, checked
+from chansim.scene.checks import Place, Tally, check_half_pressure, check_pressure, check_relative_humidity, checked
 from chansim.scene.land import land_fraction
 from chansim.scene.recognition import QUANTITIES
 from chansim.scene.reference_atmosphere import reference_at_pressure
@@ -90,7 +90,10 @@ def make_plan(recognised, *, relative_humidity_over="water", day_of_year=None):
         choose(name, name)
     choose("surface_pressure", "surface_pressure", "log_surface_pressure")
     choose("skin_temperature", "skin_temperature", "sea_surface_temperature")
-    choose("specific_humidity_2m", "specific_humidity_2m", "dew_point_2m", "relative_humidity_2m")
+    choose(
+        "specific_humidity_2m", "specific_humidity_2m", "humidity_mixing_ratio_2m", "dew_point_2m",
+        "relative_humidity_2m",
+    )  # fmt: skip
     choose("orography", "orography", "surface_geopotential")
     if "wind_speed_10m" in have or {"eastward_wind_10m", "northward_wind_10m"} <= set(have):
         choose("wind_speed_10m", "wind_speed_10m", "eastward_wind_10m")
@@ -106,7 +109,7 @@ def _outputs(plan):
     return {name: VARIABLES[name].kind for name in names}
 
 
-def canonical_columns(raw, pressure, latitude, longitude, plan, tally=None):
+def canonical_columns(raw, pressure, latitude, longitude, plan, tally=None, half_pressure=None):
     """Canonical arrays of one block of columns.
 
     Parameters
@@ -116,6 +119,7 @@ def canonical_columns(raw, pressure, latitude, longitude, plan, tally=None):
     latitude, longitude : arrays (...) [degrees]
     plan : Plan
     tally : Tally that receives the counts, or None
+    half_pressure : array with one level more, top to surface, checked against `pressure`, or None [Pa]
 
     Returns
     -------
@@ -129,6 +133,8 @@ def canonical_columns(raw, pressure, latitude, longitude, plan, tally=None):
     tally = Tally() if tally is None else tally
     place = Place(latitude, longitude, pressure, plan.sources)
     check_pressure(pressure, place)
+    if half_pressure is not None:
+        check_half_pressure(half_pressure, pressure, place)
     levels = pressure.reshape((-1,) + (1,) * latitude.ndim) if pressure.ndim == 1 else pressure
     precision = _temperature_precision(raw)
     raw = {name: _converted(values, *plan.conversions[name]) for name, values in raw.items()}
@@ -305,6 +311,8 @@ class _Column:
     def _humidity_2m(self):
         quantity, values = self.route("specific_humidity_2m")
         pressure = self.out["surface_pressure"]
+        if quantity == "humidity_mixing_ratio_2m":
+            return humidity.specific_humidity_from_mixing_ratio(values)
         if quantity == "dew_point_2m":
             return humidity.specific_humidity_from_dew_point(values, pressure)
         if quantity == "relative_humidity_2m":
