@@ -44,7 +44,7 @@ def columns():
     """The two columns: dict of arrays (level, column), top down, and (column,)."""
     pressure = TOP_PRESSURE + SIGMA[:, None] * (SURFACE_PRESSURE - TOP_PRESSURE)
     found = {"pressure": pressure, "temperature": temperature_at(pressure), "humidity": humidity_at(pressure)}
-    half = np.concatenate([[0.0], 0.5 * (SIGMA[1:] + SIGMA[:-1]), [1.0]])
+    half = np.concatenate([[1.5 * SIGMA[0] - 0.5 * SIGMA[1]], 0.5 * (SIGMA[1:] + SIGMA[:-1]), [1.0]])
     found["half_pressure"] = TOP_PRESSURE + half[:, None] * (SURFACE_PRESSURE - TOP_PRESSURE)
     heights = [fine_heights(pressure[:, c], SURFACE_PRESSURE[c], OROGRAPHY[c]) for c in (0, 1)]
     found["height"] = np.stack(heights, axis=1)
@@ -95,7 +95,8 @@ def model_file(vertical="pressure field", grid="cells"):
 def _positions(grid):
     """Dimensions, coordinates and CRS; all within a quarter of a degree of 40 N, 5 E."""
     time = {"time": ((), TIME, {"standard_name": "time"})}
-    north, east = ({"units": f"degrees_{d}", "standard_name": n} for d, n in (("north", "latitude"), ("east", "longitude")))
+    north = {"units": "degrees_north", "standard_name": "latitude"}
+    east = {"units": "degrees_east", "standard_name": "longitude"}
     if grid == "regular":
         lat, lon = np.array([40.05, 39.95]), np.array([4.9, 5.0, 5.1])
         return ("lat", "lon"), {"lat": ("lat", lat, north), "lon": ("lon", lon, east), **time}, None

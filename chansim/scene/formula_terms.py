@@ -75,11 +75,11 @@ def find_parametric(temperature, found, opened, vertical=None):
     search = _Search(temperature, found, opened)
     if vertical and "coordinate" in vertical and vertical["coordinate"] != "height":
         return _from_mapping(search, vertical)
+    if (pv := temperature.evidence.get("pv")) is not None:
+        return _from_header(search, np.asarray(pv, dtype=float))
     coord = _coordinate_with_terms(search)
     if coord is not None:
         return _from_attributes(search, coord)
-    if (pv := temperature.evidence.get("pv")) is not None:
-        return _from_header(search, np.asarray(pv, dtype=float))
     if temperature.level_dim == "sigma" and opened.dataset is None:
         return _sigma_of_grib(search)
     return _from_plain_names(search)
@@ -296,8 +296,8 @@ def _complete(search, kind, names, origin, half=None):
     missing = [term for term in _NEEDED[kind] if terms.get(term) is None]
     if missing:
         raise SceneError(_missing_terms(search, kind, names, missing, origin))
-    given = ", ".join(f"{term} = {name}" for term, name in names.items()) or "what the file has"
-    parametric.log.append(f"pressure <- {kind.replace('_', ' ')} coordinate, by {origin} ({_short(given)})")
+    given = ", ".join(f"{term} = {_in_words(name)}" for term, name in names.items()) or "what the file has"
+    parametric.log.append(f"pressure <- {kind.replace('_', ' ')} coordinate, by {origin} ({given})")
     return parametric
 
 
@@ -309,8 +309,8 @@ def _take_base_pressure(search, kind, names, terms):
         terms["ap"] = terms["a"] * terms["p0"]
 
 
-def _short(text):
-    return text if len(text) < 120 else text[:117] + "..."
+def _in_words(value):
+    return f"{len(value)} numbers" if isinstance(value, (list, tuple)) else str(value)
 
 
 def _missing_terms(search, kind, names, missing, origin):
@@ -326,6 +326,8 @@ def _missing_terms(search, kind, names, missing, origin):
 
 
 def _toml(value):
+    if isinstance(value, (list, tuple)):
+        return "[...]"
     return f'"{value}"' if isinstance(value, str) else str(value)
 
 

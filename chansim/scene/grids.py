@@ -113,7 +113,7 @@ def _from_points(data, latitude, longitude, coords, crs):
             f"horizontal dimensions of {data.name} {data.dims}"
         )
     order = tuple(d for d in data.dims if d in latitude.dims)
-    renamed = {d: short for d, short in (("latitude", "y"), ("longitude", "x")) if d in order}
+    renamed = {d: short for d, short in (("latitude", "y"), ("longitude", "x"), ("values", "cell")) if d in order}
     dims = tuple(renamed.get(d, d) for d in order)
     lat, lon = (xr.DataArray(_degrees(c.transpose(*order)), dims=dims) for c in (latitude, longitude))
     grid = Grid(dims, renamed, lat, lon)

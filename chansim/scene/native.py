@@ -93,10 +93,11 @@ def _offset_potential_temperature(fields, mapping, log):
     if len(found) != 1 or has_base:
         return []
     made = _sum(found, BASE_POTENTIAL_TEMPERATURE, found[0].units, "potential temperature")
-    log.append(
-        f"{made.name}: the file gives potential temperature as the difference from a constant, assumed to be 300 K; "
+    made.evidence["assumed"] = (
+        f"{made.name}: the file gives potential temperature as the difference from a constant, taken to be 300 K; "
         f'another one by mapping: [variables] potential_temperature = {{name = "{found[0].name}", add = 300.0}}'
     )
+    log.append(f"{made.name}: perturbation potential temperature and its constant")
     return [made]
 
 

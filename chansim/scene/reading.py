@@ -1,9 +1,6 @@
 """Model file to canonical scene: `open_scene`; what a file has and lacks: `describe_scene`."""
 
-import textwrap
-import tomllib
 from dataclasses import dataclass, replace
-from pathlib import Path
 
 import numpy as np
 import xarray as xr
@@ -12,9 +9,10 @@ from chansim._version import __version__
 from chansim.errors import SceneError
 from chansim.scene.checks import Tally
 from chansim.scene.columns import HUMIDITY_ROUTES, canonical_columns, make_plan, require
-from chansim.scene.formula_terms import KINDS
+from chansim.scene.description import defaulted, found_in_words, grid_in_words, times_in_words
 from chansim.scene.grids import find_grid, grid_mapping_variable
 from chansim.scene.humidity import SATURATION
+from chansim.scene.mapping import read_mapping
 from chansim.scene.native import on_columns, with_isentropic, with_sums
 from chansim.scene.recognition import QUANTITIES, recognise
 from chansim.scene.sources import members_of_source, open_source, refusing_damage, times_of_source
@@ -143,44 +141,12 @@ def _make_scene(opened, found, assembled, relative_humidity_over=None):
 
 def _recognise(opened, mapping):
     """What the fields are, and the table [vertical] of the mapping; sums join the fields of the source."""
-    variables, vertical = _read_mapping(mapping)
+    variables, vertical = read_mapping(mapping)
     opened.fields, variables, log = with_sums(opened.fields, variables)
     opened.fields = with_isentropic(opened.fields)
     found = recognise(opened.fields, variables)
     found.log[:0] = opened.log + log
     return found, vertical
-
-
-def _read_mapping(mapping):
-    if mapping is None:
-        return {}, None
-    if isinstance(mapping, dict):
-        return _tables(mapping if "variables" in mapping else _split(mapping), "mapping")
-    try:
-        table = tomllib.loads(Path(mapping).read_text(encoding="utf-8"))
-    except (OSError, tomllib.TOMLDecodeError, UnicodeDecodeError) as error:
-        raise SceneError(
-            f"mapping file {mapping}: cannot be read ({error}); it is TOML with a table [variables]"
-        ) from error
-    if not {"variables", "vertical"} & set(table):
-        raise SceneError(f'mapping file {mapping}: no table [variables], in which lines like temperature = "T" stand')
-    return _tables(table, f"mapping file {mapping}")
-
-
-def _split(mapping):
-    return {"variables": {k: v for k, v in mapping.items() if k != "vertical"}, "vertical": mapping.get("vertical")}
-
-
-def _tables(table, name):
-    variables, vertical = table.get("variables") or {}, table.get("vertical")
-    for title, part in (("variables", variables), ("vertical", vertical or {})):
-        if not isinstance(part, dict):
-            raise SceneError(f"{name}: {title} is a table, in which lines like NAME = ... stand")
-    if vertical and not {"coordinate", "known_pressure"} & set(vertical):
-        raise SceneError(
-            f'{name}: [vertical] needs a line coordinate = "...", one of height, {", ".join(KINDS)}; then its terms'
-        )
-    return variables, vertical
 
 
 def _saturation(opened, found, wanted):
@@ -362,7 +328,7 @@ def _finish(scene, opened, found, plan, grid, notes, tally):
         "source": opened.name,
         "source_kind": opened.kind,
         "recognised": list(found.log),
-        "defaulted": "\n".join(_defaulted(found, plan, opened) + notes),
+        "defaulted": "\n".join(defaulted(found, plan, opened) + notes),
         "adjusted": "\n".join(tally.lines()),
         "software": f"chansim {__version__}",
     }
@@ -394,34 +360,13 @@ def _add_coordinates(scene, opened, grid):
     scene.coords["time"] = ((), time, {"standard_name": "time", "long_name": "valid time"})
 
 
-def _defaulted(found, plan, opened):
-    """Lines on every variable that is absent and has a default."""
-    lines = []
-    for variable in VARIABLES.values():
-        if not variable.default or variable.name in plan.routes or variable.kind not in ("level", "surface"):
-            continue
-        lines.append(f"{variable.name}: {_default_in_words(variable, found, plan)}")
-    if plan.routes.get("skin_temperature") == "sea_surface_temperature":
-        lines.append("skin_temperature over land: " + VARIABLES["skin_temperature"].default)
-    if opened.time is None:
-        lines.append("time: not given by the source; the reference atmosphere is the mean of the year")
-    return lines
-
-
-def _default_in_words(variable, found, plan):
-    if variable.name == "skin_temperature":
-        return "2 m temperature" if "air_temperature_2m" in plan.routes else "temperature of the lowest level"
-    if variable.name == "surface_pressure" and {"height", "orography"} <= set(plan.routes):
-        return "from the heights of the levels and of the ground, or the pressure of the lowest level"
-    return variable.default
-
-
 def describe_scene(source, *, time=None, mapping=None, select=None):
     """What a source has, what was recognised as what, what is missing and what would be assumed.
 
     Parameters
     ----------
-    source, time, mapping, select : as for `open_scene`; without `time` the first one is described
+    source, time, mapping, select : as for `open_scene`; without `time` the first one is described, without `select`
+        the first member
 
     Returns
     -------
@@ -431,14 +376,8 @@ def describe_scene(source, *, time=None, mapping=None, select=None):
     ------
     SceneError : the source cannot be opened at all
     """
-    try:
-        opened = open_source(source, time=time, select=select)
-    except SceneError as error:
-        first = _first_time(error)
-        if time is not None or first is None:
-            raise
-        opened = open_source(source, time=first, select=select)
-    lines = [f"{opened.name} ({opened.kind})", _times_in_words(opened)]
+    opened, members = _open_first(source, time, select)
+    lines = [f"{opened.name} ({opened.kind})", times_in_words(opened), *members]
     problems, found, scene, notes = [], None, None, []
     try:
         found, vertical = _recognise(opened, mapping)
@@ -447,7 +386,7 @@ def describe_scene(source, *, time=None, mapping=None, select=None):
             _chunk_if_large(found)
             assembled = _assemble(opened, found, vertical)
         notes = assembled.notes
-        lines.append(_grid_in_words(assembled.pressure, assembled.grid))
+        lines.append(grid_in_words(assembled.pressure, assembled.grid))
         if not assembled.raw.chunks:  # a larger one is not read just to be described
             scene = _make_scene(opened, found, assembled)
     except SceneError as error:
@@ -455,7 +394,7 @@ def describe_scene(source, *, time=None, mapping=None, select=None):
     if found is None:
         lines += ["", "Fields:", *(f"  {f}" for f in opened.fields)]
     else:
-        lines += _found_in_words(opened, found, notes)
+        lines += found_in_words(opened, found, notes)
     if scene is not None:
         adjusted = scene.attrs["adjusted"].splitlines()
         lines += ["", f"Columns masked for missing values: {scene.attrs['masked_columns']}", *adjusted]
@@ -463,40 +402,19 @@ def describe_scene(source, *, time=None, mapping=None, select=None):
     return "\n".join(lines)
 
 
-def _first_time(error):
-    text = str(error)
-    return text.rsplit('time="', 1)[1].split('"')[0] if 'time="' in text else None
-
-
-def _times_in_words(opened):
-    if not opened.times:
-        return 'Valid time: not given; pass time="..." if it is known'
-    if len(opened.times) == 1:
-        return f"Valid time: {opened.times[0]}"
-    return f"Valid times: {len(opened.times)}, {opened.times[0]} to {opened.times[-1]}; shown here: {opened.time}"
-
-
-def _grid_in_words(pressure, grid):
-    size = " x ".join(str(n) for n in grid.latitude.shape)
-    mapping = grid.crs.to_cf().get("grid_mapping_name", grid.crs.name) if grid.crs else "no grid mapping"
-    profile = pressure if pressure.ndim == 1 else pressure.mean([d for d in pressure.dims if d != "level"])
-    lat, lon = grid.latitude.values, grid.longitude.values
-    return (
-        f"Columns: {size} ({mapping}), latitude {lat.min():.2f} to {lat.max():.2f}, longitude {lon.min():.2f} to "
-        f"{lon.max():.2f}; {pressure.sizes['level']} levels, {float(profile[0]) / 100:g} to "
-        f"{float(profile[-1]) / 100:g} hPa"
-    )
-
-
-def _found_in_words(opened, found, notes):
-    lines = ["", "Recognised:", *(f"  {line}" for line in found.log)]
-    if found.unused:
-        lines += ["", "Not used:", *(f"  {f}" for f in found.unused)]
-    assumed = _defaulted(found, make_plan(found), opened) + notes
-    lines += ["", "Missing, and what is assumed instead:", *(f"  {line}" for line in assumed)]
-    lines += ["", "To supply one of these, add it to the source with its standard name, or name it:"]
-    lines += ['  open_scene(source, mapping={"skin_temperature": "NAME"})']
-    return [
-        *lines,
-        *textwrap.wrap(f"quantities: {', '.join(QUANTITIES)}", 100, initial_indent="  ", subsequent_indent="  "),
-    ]
+def _open_first(source, time, select):
+    """The source at the first time and of the first member where none is named; lines on the members."""
+    members = {dim: labels for dim, labels in scene_members(source).items() if dim not in (select or {})}
+    lines = []
+    for dim, labels in members.items():
+        shown = ", ".join(map(str, labels[:20])) + (", ..." if len(labels) > 20 else "")
+        if len(labels) > 1:
+            lines.append(
+                f"Ensemble members: {dim} = {shown}; shown here: {labels[0]}; open one with "
+                f'select={{"{dim}": {labels[0]!r}}}'
+            )
+    select = {dim: labels[0] for dim, labels in members.items()} | dict(select or {})
+    if time is None:
+        times = scene_times(source)
+        time = times[0] if times else None
+    return open_source(source, time=time, select=select), lines
