@@ -13,7 +13,8 @@ LEVELS = 60
 TOP_PRESSURE = 500.0  # Pa
 OROGRAPHY = np.array([0.0, 1500.0])  # m
 SURFACE_PRESSURE = np.array([101325.0, 84500.0])  # Pa
-SIGMA = np.linspace(0.06, 0.9985, LEVELS) ** 2.2  # from the top down
+HALF_SIGMA = np.linspace(0.06, 1.0, LEVELS + 1) ** 2.2  # from the top down
+SIGMA = 0.5 * (HALF_SIGMA[1:] + HALF_SIGMA[:-1])
 RADIUS = 6371008.8  # m, IUGG mean radius
 GAS_CONSTANT, GRAVITY = 8.314462618 / 28.9647e-3, 9.80665
 # 2/7, and the ratio of molar masses (CODATA and US Standard Atmosphere 1976)
@@ -44,8 +45,7 @@ def columns():
     """The two columns: dict of arrays (level, column), top down, and (column,)."""
     pressure = TOP_PRESSURE + SIGMA[:, None] * (SURFACE_PRESSURE - TOP_PRESSURE)
     found = {"pressure": pressure, "temperature": temperature_at(pressure), "humidity": humidity_at(pressure)}
-    half = np.concatenate([[1.5 * SIGMA[0] - 0.5 * SIGMA[1]], 0.5 * (SIGMA[1:] + SIGMA[:-1]), [1.0]])
-    found["half_pressure"] = TOP_PRESSURE + half[:, None] * (SURFACE_PRESSURE - TOP_PRESSURE)
+    found["half_pressure"] = TOP_PRESSURE + HALF_SIGMA[:, None] * (SURFACE_PRESSURE - TOP_PRESSURE)
     heights = [fine_heights(pressure[:, c], SURFACE_PRESSURE[c], OROGRAPHY[c]) for c in (0, 1)]
     found["height"] = np.stack(heights, axis=1)
     heights = [fine_heights(found["half_pressure"][:, c], SURFACE_PRESSURE[c], OROGRAPHY[c]) for c in (0, 1)]

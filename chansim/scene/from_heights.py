@@ -200,13 +200,25 @@ def _specific_humidity(values, kind, temperature, pressure):
 def _integrate(warmth, moisture, heights, known_pressure, known_height, ground, *, kind, potential):
     heights, known_height = (hydrostatic.geopotential_height(h) for h in (heights, known_height))
     ground = np.where(np.isfinite(ground), hydrostatic.geopotential_height(np.nan_to_num(ground, neginf=0.0)), -np.inf)
-    integral = hydrostatic.pressure_from_heights_and_potential if potential else hydrostatic.pressure_from_heights
-    pressure = known_pressure * np.exp((known_height - heights) / _FIRST_GUESS)
-    for _ in range(1 if kind in ("specific_humidity", "humidity_mixing_ratio", "dry") else _TIMES):
+    where = known_pressure, known_height, ground
+    if potential:
+        pressure = hydrostatic.pressure_from_heights_and_potential(heights, warmth, *where)
+    else:
+        pressure = known_pressure * np.exp((known_height - heights) / _FIRST_GUESS)
+    # potential temperature bends between the levels where temperature hardly does, so temperature is integrated;
+    # it depends on the pressure, as the humidity may
+    for _ in range(_rounds(kind, potential)):
         temperature = hydrostatic.temperature_from_potential(warmth, pressure) if potential else warmth
         moist = _specific_humidity(moisture, kind, temperature, pressure)
-        pressure = integral(heights, humidity.virtual_temperature(warmth, moist), known_pressure, known_height, ground)
+        virtual = humidity.virtual_temperature(temperature, moist)
+        pressure = hydrostatic.pressure_from_heights(heights, virtual, *where)
     return pressure
+
+
+def _rounds(kind, potential):
+    if potential:
+        return 2 * _TIMES
+    return 1 if kind in ("specific_humidity", "humidity_mixing_ratio", "dry") else _TIMES
 
 
 def _ideal_gas(warmth, moisture, density, *, kind, potential):

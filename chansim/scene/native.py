@@ -11,6 +11,7 @@ import xarray as xr
 
 from chansim.errors import SceneError
 from chansim.scene.recognition import QUANTITIES, Field
+from chansim.scene.sources import unstaggered_name
 from chansim.scene.units import convert
 
 # the constant that mesoscale models take from potential temperature before they write it
@@ -152,7 +153,8 @@ def _unstaggered(f, key, dim):
         dim = f.level_dim
     if dim not in f.data.dims:
         raise SceneError(f"mapping: {key}: staggered = '{dim}' is no dimension of {f.name} {f.data.dims}")
-    return replace(f, name=f"mean of {f.name}", open=lambda: means_along(f.data, dim))
+    evidence = {**f.evidence, "averaged": dim}
+    return replace(f, name=f"mean of {f.name}", open=lambda: means_along(f.data, dim), evidence=evidence)
 
 
 def means_along(data, dim):
@@ -182,16 +184,12 @@ def on_columns(f, template, level_dim, name):
     """
     data = f.data
     for own in [d for d in data.dims if d not in template.dims and d != f.level_dim]:
-        target = _unstaggered_name(str(own))
+        target = unstaggered_name(own)
         if target in template.dims and target != level_dim:
             if data.sizes[own] != template.sizes[target] + 1:
                 raise SceneError(_no_fit(name, f, own, data.sizes[own], target, template.sizes[target]))
             data = means_along(data, own).rename({own: target})
     return data
-
-
-def _unstaggered_name(dim):
-    return re.sub(r"[_-]?(stag|staggered)$", "", dim, flags=re.IGNORECASE)
 
 
 def _no_fit(name, f, own, size, target, wanted):
@@ -219,7 +217,9 @@ def on_full_levels(f, data, reference_dim, count, name):
     SceneError : it says that it lies between the levels, but is not one longer
     """
     own = f.level_dim
-    declared = _unstaggered_name(str(own)) == reference_dim and own != reference_dim
+    if f.evidence.get("averaged") == own and data.sizes[own] == count:
+        return data.rename({own: reference_dim}) if own != reference_dim else data
+    declared = unstaggered_name(own) == reference_dim and own != reference_dim
     if data.sizes[own] != count + 1:
         if declared:
             raise SceneError(_no_fit(name, f, own, data.sizes[own], reference_dim, count))

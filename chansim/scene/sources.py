@@ -2,6 +2,7 @@
 
 import contextlib
 import glob
+import re
 import warnings
 from dataclasses import dataclass, field
 from pathlib import Path
@@ -396,7 +397,13 @@ def horizontal_dims(dataset):
     for name, variable in dataset.variables.items():
         if _is_horizontal(name, variable):
             dims += [d for d in variable.dims if d not in dims]
+    dims += [d for d in dataset.dims if d not in dims and unstaggered_name(d) in dims]
     return tuple(d for d in dims if not _is_vertical_dim(d, dataset))
+
+
+def unstaggered_name(dim):
+    """Name of a dimension without the mark of values that lie between: "west_east_stag" gives "west_east"."""
+    return re.sub(r"[_-]?(stag|staggered)$", "", str(dim), flags=re.IGNORECASE)
 
 
 _HORIZONTAL_STANDARD_NAMES = (
