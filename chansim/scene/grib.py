@@ -218,6 +218,7 @@ def _open(stream, headers, chunks, on_levels):
     )
     (name,) = dataset.data_vars
     data = dataset[name].drop_vars([c for c in ("step", "time", "valid_time", "number") if c in dataset.coords])
+    data = _in_rows(data, stream, headers[0])
     if not on_levels:
         return data
     family = _LEVEL_FAMILY[kind]
@@ -231,6 +232,28 @@ def _open(stream, headers, chunks, on_levels):
         data = data.assign_coords(isobaric=data["isobaric"].values * to_pascal)
         data["isobaric"].attrs = {"units": "Pa", "standard_name": "air_pressure"}
     return data
+
+
+# grids of rows that cfgrib gives as a list of values all the same
+_ROWS_AS_LIST = ("mercator", "transverse_mercator", "space_view", "equatorial_azimuthal_equidistant")
+
+
+def _in_rows(data, stream, header):
+    """A field in rows and columns where cfgrib leaves them in one list."""
+    if "values" not in data.dims or data.attrs.get("GRIB_gridType") not in _ROWS_AS_LIST:
+        return data
+    message = stream[header.offset]
+    rows = tuple(int(message.message_get(key, default=0) or 0) for key in ("Ny", "Nx"))
+    if rows[0] * rows[1] != data.sizes["values"]:
+        return data
+
+    def fold(array):
+        folded = (array.data if array.chunks else array.values).reshape(*array.shape[:-1], *rows)
+        return (*array.dims[:-1], "y", "x"), folded, array.attrs
+
+    data = data.transpose(..., "values")
+    kept = {n: c if "values" not in c.dims else fold(c.variable) for n, c in data.coords.items()}
+    return xr.DataArray(fold(data)[1], dims=fold(data)[0], coords=kept, name=data.name, attrs=data.attrs)
 
 
 def _join_levels(pieces, dim):
