@@ -129,8 +129,24 @@ def _out_of_range(variable, values, outside, counted, place):
         f"{variable.name}{f' (from {source})' if source else ''}: {np.count_nonzero(outside)} of {values.size} values "
         f"outside the possible {variable.valid_min:g} to {variable.valid_max:g} {variable.units}; range seen "
         f"{seen_min:g} to {seen_max:g}, worst {values.flat[worst]:g} at {where}. "
-        f"Likely cause: {cause}. " + unit_fix(variable.name, source)
+        f"Likely cause: {cause}. " + _fix(variable.name, source, seen_min, seen_max)
     )
+
+
+def _fix(name, source, seen_min, seen_max):
+    """What to do about values out of range, in words."""
+    if name == "cloud_fraction" and seen_max > 1.0 and seen_min >= 0.0:
+        return (
+            f'If these are per cent, say mapping={{"{name}": {{"name": "{source}", "units": "%"}}}}; if not, limit '
+            "the field to 0..1 in the file"
+        )
+    if name in _CONDENSATES and seen_min < 0.0:
+        return (
+            "Less than nothing cannot be simulated; set negative values to zero in the file when they come from "
+            "interpolation or packing, or leave the field out with "
+            f'mapping={{"{name}": ""}}'
+        )
+    return unit_fix(name, source)
 
 
 def unit_fix(name, source):
@@ -150,6 +166,8 @@ def likely_cause(units, seen_min, seen_max, valid_min, valid_max):
             return words
     if any(np.isclose(value, fill) for fill in _FILL_VALUES for value in (seen_min, seen_max)):
         return "an undeclared fill value; set the _FillValue attribute"
+    if valid_min == 0.0 and seen_min < 0.0 and seen_max <= valid_max:
+        return "negative values of a quantity that has none, as interpolation and packing leave"
     return "wrong units, a damaged field or another variable"
 
 

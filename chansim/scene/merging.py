@@ -61,7 +61,7 @@ def _aligned(part, reference, path, first_path, is_free):
             )
         else:
             part = part.isel({dim: order}) if not np.array_equal(order, np.arange(order.size)) else part
-            part = part.assign_coords({dim: wanted})
+            part = part.assign_coords({dim: wanted.variable})  # without scalar coordinates that ride along
     return part
 
 
@@ -114,7 +114,9 @@ def _joined(result, part, path, origin):
             )
         if name not in part.dims:
             part = part.drop_vars(name)
-    return result.assign_coords(part.coords).assign({n: part[n] for n in part.data_vars})
+    return result.assign_coords({n: c.variable for n, c in part.coords.items()}).assign(
+        {n: part[n].variable for n in part.data_vars}
+    )
 
 
 def _equal(ours, theirs):
