@@ -169,3 +169,42 @@ def _native(data, air, dims, _vertical):
         data[name] = (name_dims, values[::-1].copy(), attrs)
     for name, description in (("ps", "SFC PRESSURE"), ("orog", "Terrain Height"), ("ts", "SURFACE SKIN TEMPERATURE")):
         data[name].attrs = {"description": description, "units": data[name].attrs["units"], "stagger": ""}
+
+
+def native_history(times=2):
+    """The native file with what stands beside it in a history file, over `Time`, positions of its own for winds."""
+    data = model_file("native", "regular").drop_vars("time").rename(lat="south_north", lon="west_east")
+    longitude, latitude = np.meshgrid(data["west_east"].values, data["south_north"].values)
+    data = data.drop_vars(["south_north", "west_east"])
+    data = data.rename(ps="PSFC", ts="TSK", orog="HGT", sea="LANDMASK")
+    data["LANDMASK"].attrs = {"description": "LAND MASK (1 FOR LAND, 0 FOR WATER)", "units": "", "stagger": ""}
+    level, ground = ("bottom_top", "south_north", "west_east"), ("south_north", "west_east")
+    sizes = dict(data.sizes) | {"west_east_stag": 4, "soil_layers_stag": 4}
+    beside = {
+        "U": (("bottom_top", "south_north", "west_east_stag"), 10.0, "x-wind component", "m s-1"),
+        "W": (("bottom_top_stag", *ground), 0.0, "z-wind component", "m s-1"),
+        "T2": (ground, 290.0, "TEMP at 2 M", "K"),
+        "TH2": (ground, 289.0, "POT TEMP at 2 M", "K"),
+        "Q2": (ground, 0.008, "QV at 2 M", "kg kg-1"),
+        "U10": (ground, 3.0, "U at 10 M", "m s-1"),
+        "V10": (ground, 4.0, "V at 10 M", "m s-1"),
+        "SST": (ground, 299.0, "SEA SURFACE TEMPERATURE", "K"),
+        "TSLB": (("soil_layers_stag", *ground), 280.0, "SOIL TEMPERATURE", "K"),
+        "MU": (ground, 1000.0, "perturbation dry air mass in column", "Pa"),
+        "MUB": (ground, 9e4, "base state dry air mass in column", "Pa"),
+        "P_HYD": (level, 5e4, "hydrostatic pressure", "Pa"),
+        "CLDFRA": (level, 0.5, "CLOUD FRACTION", ""),
+        "XLAND": (ground, 2.0, "LAND MASK (1 FOR LAND, 2 FOR WATER)", ""),
+        "T00": ((), 290.0, "BASE STATE TEMPERATURE", "K"),
+        "P_TOP": ((), 500.0, "PRESSURE TOP OF THE MODEL", "Pa"),
+        "XLAT": (ground, latitude, "LATITUDE, SOUTH IS NEGATIVE", "degree_north"),
+        "XLONG": (ground, longitude, "LONGITUDE, WEST IS NEGATIVE", "degree_east"),
+        "XLAT_U": (("south_north", "west_east_stag"), 0.0, "LATITUDE, SOUTH IS NEGATIVE", "degree_north"),
+        "XLONG_U": (("south_north", "west_east_stag"), 0.0, "LONGITUDE, WEST IS NEGATIVE", "degree_east"),
+    }
+    for name, (dims, value, description, units) in beside.items():
+        values = np.broadcast_to(np.asarray(value, dtype="f8"), [sizes[d] for d in dims]).copy()
+        data[name] = (dims, values, {"description": description, "units": units})
+    series = xr.concat([data] * times, dim="Time")
+    series["Times"] = ("Time", np.array([f"2020-07-15_{12 + k:02d}:00:00".encode() for k in range(times)]))
+    return series

@@ -3,7 +3,7 @@
 import numpy as np
 import pytest
 import xarray as xr
-from scene_atmosphere import GRAVITY, columns, humidity_at, model_file, temperature_at
+from scene_atmosphere import GRAVITY, columns, humidity_at, model_file, native_history, temperature_at
 from scene_samples import write_any_grib
 
 import chansim  # noqa: F401
@@ -344,7 +344,7 @@ def test_hydrostatic_pressure_on_height_levels(kind):
         values = geopotential if kind.startswith("geopotential") else height
         data["lev"] = ("lev", values / 1000.0, {"standard_name": kind, "units": "km", "positive": "up"})
     upward = data.isel(lev=slice(None, None, -1))
-    for given in (data, upward, upward.chunk({"ncells": 1})):
+    for given in (data, upward, upward.chunk({"ncells": 1}), data.chunk({"lev": 7})):
         np.testing.assert_allclose(open_scene(given)["pressure"].values, np.repeat(expected[:, None], 3, 1), rtol=3e-4)
 
 
@@ -442,6 +442,18 @@ def test_isentropic_levels():
     np.testing.assert_allclose(scene["pressure"][:, 1], [9e3, 2.8e4, 5.5e4])
 
 
+def test_isentropic_levels_under_the_ground():
+    data = two_columns(standard_name="air_potential_temperature", units="K").drop_vars("t")
+    data["lev"] = ("lev", [400.0, 330.0, 285.0], data["lev"].attrs)
+    data["PS"].attrs["standard_name"] = "surface_air_pressure"
+    data["pres"] = (("lev", "cell"), [[1e4, 9e3], [3e4, 2.8e4], [9e4, np.nan]], {
+        "standard_name": "air_pressure", "units": "Pa"})  # fmt: skip
+    scene = open_scene(data)
+    assert scene["column_valid"].all() and scene["pressure"][2, 1] > 60000.0
+    assert "pressure: missing under the ground, put there: 1 values" in scene.attrs["adjusted"]
+    np.testing.assert_allclose(scene["skin_temperature"][1], 330.0 * 0.28 ** (2.0 / 7.0), rtol=1e-6)
+
+
 # --- base state and perturbation ----------------------------------------------------------------------
 
 
@@ -464,6 +476,23 @@ def test_sums_and_constants_by_mapping_file(tmp_path):
     found, expected = open_scene(data, mapping=file), open_scene(model_file("native", "cells"))
     for name in ("pressure", "temperature", "height"):
         np.testing.assert_allclose(found[name], expected[name], rtol=1e-12)
+
+
+def test_history_file_of_a_mesoscale_model(tmp_path):
+    native_history().to_netcdf(tmp_path / "history")
+    scene = open_scene(tmp_path / "history", time="2020-07-15T13")
+    air = columns()
+    kinds = np.arange(6).reshape(2, 3) % 2
+    for name, key in (("pressure", "pressure"), ("temperature", "temperature"), ("specific_humidity", "humidity")):
+        np.testing.assert_allclose(scene[name], air[key][:, kinds], rtol=1e-6)
+    np.testing.assert_allclose(scene["wind_speed_10m"], 5.0)  # 3, 4, 5
+    np.testing.assert_allclose(scene["air_temperature_2m"], 290.0)
+    np.testing.assert_allclose(scene["specific_humidity_2m"], 0.008 / 1.008)
+    np.testing.assert_allclose(scene["skin_temperature"], np.array([292.0, 281.0])[kinds])
+    np.testing.assert_allclose(scene["cloud_fraction"], 0.5)
+    np.testing.assert_allclose(scene["land_fraction"], 0.0)
+    np.testing.assert_allclose(scene["latitude"][:, 0], [40.05, 39.95])
+    assert scene["time"].values == np.datetime64("2020-07-15T13:00")
 
 
 def test_the_perturbation_alone_is_no_pressure():
@@ -584,3 +613,16 @@ def test_grib_isentropic_levels(tmp_path):
     write_any_grib(file, "regular_ll_pl_grib2", messages)
     scene = open_scene(file)
     np.testing.assert_allclose(scene["temperature"].values[:, 0, 0], [207.179, 233.948, 281.470], atol=2e-3)
+
+
+def test_grib_height_levels(tmp_path):
+    file = tmp_path / "heights.grb"
+    messages = [({"shortName": "sp", "typeOfLevel": "surface"}, 101325.0),
+                ({"shortName": "orog", "typeOfLevel": "surface"}, 0.0)]  # fmt: skip
+    for height, warm in ((1000, 281.65), (5000, 255.65), (10000, 223.15)):
+        level = {"typeOfLevel": "heightAboveSea", "level": height}
+        messages += [({"shortName": "t", **level}, warm), ({"shortName": "q", **level}, 0.0)]
+    write_any_grib(file, "regular_ll_pl_grib2", messages)
+    # US Standard Atmosphere 1976, table I, geometric heights: 264.99, 540.48 and 898.76 hPa. Its temperatures at
+    # these heights are 223.252, 255.676 and 281.651 K
+    np.testing.assert_allclose(open_scene(file)["pressure"].values[:, 0, 0], [26499.0, 54048.0, 89876.0], rtol=4e-4)

@@ -123,21 +123,22 @@ def canonical_columns(raw, pressure, latitude, longitude, plan, tally=None, half
 
     Returns
     -------
-    dict of the arrays named in `plan.outputs`, in the precision of the temperature, and `column_valid`
-    (...) of bool
+    dict of `pressure`, the arrays named in `plan.outputs` in the precision of the temperature, and `column_valid` (...)
+    of bool
 
     Raises
     ------
     SceneError : impossible values; see `checks`
     """
     tally = Tally() if tally is None else tally
+    precision = _temperature_precision(raw)
+    raw = {name: _converted(values, *plan.conversions[name]) for name, values in raw.items()}
+    pressure = _continued_under_ground(pressure, raw, plan, tally)
     place = Place(latitude, longitude, pressure, plan.sources)
     check_pressure(pressure, place)
     if half_pressure is not None:
         check_half_pressure(half_pressure, pressure, place)
     levels = pressure.reshape((-1,) + (1,) * latitude.ndim) if pressure.ndim == 1 else pressure
-    precision = _temperature_precision(raw)
-    raw = {name: _converted(values, *plan.conversions[name]) for name, values in raw.items()}
     column = _Column(raw, levels, latitude, longitude, plan, place, tally)
     column.read_surface_pressure()
     column.read_temperature()
@@ -146,7 +147,24 @@ def canonical_columns(raw, pressure, latitude, longitude, plan, tally=None, half
     column.read_surface()
     column.read_height()
     columns = {name: column.out[name].astype(precision, copy=False) for name in plan.outputs}
-    return {**columns, "column_valid": column.valid()}
+    return {"pressure": pressure, **columns, "column_valid": column.valid()}
+
+
+def _continued_under_ground(pressure, raw, plan, tally):
+    """Pressure with missing values at the bottom of columns put just under the surface pressure.
+
+    Isentropic levels that lie under the ground come without pressure; nothing there counts.
+    """
+    quantity = plan.routes.get("surface_pressure")
+    if pressure.ndim == 1 or quantity is None or not np.isnan(pressure[-1]).any():
+        return pressure
+    surface = raw[quantity] if quantity == "surface_pressure" else np.exp(raw[quantity].astype(float))
+    filled = pressure.copy()
+    for k in range(1, len(pressure)):
+        to_fill = np.isnan(pressure[k:]).all(axis=0) & np.isfinite(filled[k - 1])
+        filled[k] = np.where(to_fill, np.maximum(filled[k - 1], surface * 1.0001) * 1.0001, filled[k])
+    tally.add("pressure: missing under the ground, put there", np.count_nonzero(np.isnan(pressure) & ~np.isnan(filled)))
+    return filled
 
 
 def _temperature_precision(raw):

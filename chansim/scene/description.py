@@ -82,12 +82,23 @@ def _how_to_supply(plan, unused):
 
 
 # offered as an example even when nothing in the source looks like it
-_OFTEN_SUPPLIED = ("skin_temperature", "cloud_liquid", "cloud_ice", "cloud_fraction")
+_OFTEN_SUPPLIED = (
+    "temperature",
+    "specific_humidity",
+    "skin_temperature",
+    "cloud_liquid",
+    "cloud_ice",
+    "cloud_fraction",
+)
 
 
 def _may_be(variable, f):
     """True when a left-over field has the place and the units of a variable; units of 1 tell nothing."""
-    if variable.units == "1" or f.units is None or (f.place == "levels") != (variable.kind == "level"):
+    if (
+        variable.units == "1"
+        or not str(f.units or "").strip(" 1-")
+        or (f.place == "levels") != (variable.kind == "level")
+    ):
         return False
     if variable.kind == "surface" and f.place not in ("surface", "single"):
         return False

@@ -23,6 +23,11 @@ _LEVEL_FAMILY = {
     "generalVertical": "generalVertical", "generalVerticalLayer": "generalVertical", "theta": "theta",
     "hybridHeight": "hybridHeight", "heightAboveSea": "heightAboveSea", "hybridPressure": "hybrid",
 }  # fmt: skip
+# what the values of a kind of level are, where cfgrib does not say
+_LEVEL_ATTRS = {
+    "theta": {"units": "K", "standard_name": "air_potential_temperature"},
+    "heightAboveSea": {"units": "m", "standard_name": "altitude"},
+}
 _ON_HYBRID_BUT_SURFACE = (129, 152)  # surface geopotential and ln p_s are coded on model level 1
 
 
@@ -225,8 +230,8 @@ def _open(stream, headers, chunks, on_levels):
     if kind not in data.dims:
         data = data.expand_dims(kind)
     data = data.rename({kind: family}) if kind != family else data
-    if family == "theta":
-        data[family].attrs = {"units": "K", "standard_name": "air_potential_temperature"}
+    if family in _LEVEL_ATTRS:
+        data[family].attrs = dict(_LEVEL_ATTRS[family])
     if family == "isobaric":
         to_pascal = 100.0 if kind == "isobaricInhPa" else 1.0
         data = data.assign_coords(isobaric=data["isobaric"].values * to_pascal)

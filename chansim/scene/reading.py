@@ -262,10 +262,11 @@ def _eager_columns(assembled, plan, name, tally):
         pressure = np.asarray(assembled.pressure.values, dtype=float)
         half = None if assembled.half_pressure is None else np.asarray(assembled.half_pressure.values, dtype=float)
     columns = canonical_columns(values, pressure, grid.latitude.values, grid.longitude.values, plan, tally, half)
-    return _as_dataset(columns, pressure, grid.dims, plan, half)
+    return _as_dataset(columns, grid.dims, plan, half)
 
 
-def _as_dataset(columns, pressure, dims, plan, half=None):
+def _as_dataset(columns, dims, plan, half=None):
+    pressure = columns.pop("pressure")
     variables = {"pressure": (("level",) if pressure.ndim == 1 else ("level", *dims), pressure)}
     if half is not None:
         variables["half_pressure"] = (("half_level",) if half.ndim == 1 else ("half_level", *dims), half)
@@ -292,7 +293,7 @@ def _lazy_columns(assembled, plan):
         half = np.asarray(part["__half_pressure"].values, dtype=float) if "__half_pressure" in part else None
         latitude, longitude = part["__latitude"].values, part["__longitude"].values
         columns = canonical_columns(values, pressure, latitude, longitude, plan, half_pressure=half)
-        return _as_dataset(columns, pressure, grid.dims, plan, half)
+        return _as_dataset(columns, grid.dims, plan, half)
 
     return xr.map_blocks(work, block, template=_template(block, grid, plan))
 
@@ -343,7 +344,7 @@ def _model_name(opened):
     """What the source says of the model that wrote it ("" when it says nothing)."""
     attributes = opened.dataset.attrs if opened.dataset is not None else opened.fields[0].evidence
     names = ("model", "model_id", "source_id", "source", "TITLE", "title", "institution")
-    known = next((str(attributes[name]) for name in names if attributes.get(name)), "")
+    known = next((str(attributes[name]).strip() for name in names if attributes.get(name)), "")
     return known or (f"GRIB centre {attributes['centre']}" if attributes.get("centre") else "")
 
 
