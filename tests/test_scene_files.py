@@ -9,10 +9,12 @@ from pathlib import Path
 import numpy as np
 import pytest
 import xarray as xr
+from scene_atmosphere import VERTICALS, model_file
 from scene_samples import TIME, basic_grib_messages, pressure_level_file, write_grib
 
 import chansim  # noqa: F401
 from chansim.errors import SceneError
+from chansim.scene import reading
 from chansim.scene.reading import describe_scene, open_scene, scene_members, scene_times
 
 HOURS = TIME + np.arange(3) * np.timedelta64(6, "h")
@@ -230,16 +232,16 @@ def test_members_of_grib(tmp_path):
 BIG = {"time": 72, "lev": 137, "cell": 260_000}  # two fields of 4 bytes: 20.5 GB
 
 
-def write_big_zarr(path):
+def write_big_zarr(path, cells=BIG["cell"], times=BIG["time"]):
     """A Zarr store of 20 GB of which nothing is written but the description: every chunk is its fill value."""
     import zarr
 
     root = zarr.create_group(path, zarr_format=3)
-    shape = tuple(BIG.values())
+    shape = (times, BIG["lev"], cells)
     fields = {
         "t": (shape, (1, 20, 65_000), 260.0, "air_temperature", "K"),
         "q": (shape, (1, 20, 65_000), 1e-4, "specific_humidity", "kg kg-1"),
-        "ps": ((BIG["time"], BIG["cell"]), (1, 65_000), 1e5, "surface_air_pressure", "Pa"),
+        "ps": ((times, cells), (1, 65_000), 1e5, "surface_air_pressure", "Pa"),
     }
     for name, (size, chunks, fill, standard_name, units) in fields.items():
         array = root.create_array(
@@ -247,11 +249,11 @@ def write_big_zarr(path):
         )
         array.attrs.update({"standard_name": standard_name, "units": units})
     small = {
-        "time": (np.arange(BIG["time"], dtype="i8"), {"units": "hours since 2020-01-01", "standard_name": "time"}),
+        "time": (np.arange(times, dtype="i8"), {"units": "hours since 2020-01-01", "standard_name": "time"}),
         "ap": (np.linspace(100.0, 0.0, BIG["lev"]), {"units": "Pa"}),
         "b": (np.linspace(0.0, 0.99, BIG["lev"]) + 1e-3, {"units": "1"}),
-        "lat": (np.linspace(-60.0, 60.0, BIG["cell"]), {"units": "degrees_north"}),
-        "lon": (np.linspace(0.0, 300.0, BIG["cell"]), {"units": "degrees_east"}),
+        "lat": (np.linspace(-60.0, 60.0, cells), {"units": "degrees_north"}),
+        "lon": (np.linspace(0.0, 300.0, cells), {"units": "degrees_east"}),
         "lev": (np.arange(1.0, BIG["lev"] + 1), {
             "standard_name": "atmosphere_hybrid_sigma_pressure_coordinate", "positive": "down",
             "formula_terms": "ap: ap b: b ps: ps"}),
@@ -271,13 +273,22 @@ import json, resource, sys
 import chansim
 from chansim.scene.reading import open_scene, scene_times
 times = scene_times(sys.argv[1])
-scene = open_scene(sys.argv[1], time=times[40])
-scene.isel(cell=slice(0, 1000)).load() if len(sys.argv) > 2 else scene.load()
+scene = open_scene(sys.argv[1], time=times[-2])
+lazy = bool(scene["temperature"].chunks)
+scene = scene.isel(cell=slice(0, 1000)).load() if len(sys.argv) > 2 else scene.load()
 print(json.dumps({
     "times": len(times), "lowest": float(scene["pressure"][-1, 0]), "warm": float(scene["temperature"][60, 17]),
-    "lazy": bool(scene["temperature"].chunks), "peak": resource.getrusage(resource.RUSAGE_SELF).ru_maxrss * 1024,
+    "lazy": lazy, "peak": resource.getrusage(resource.RUSAGE_SELF).ru_maxrss * 1024,
 }))
 """
+
+
+def open_one_time(*arguments):
+    """Runs OPEN_ONE_TIME in a process of its own."""
+    command, root = [sys.executable, "-c", OPEN_ONE_TIME, *map(str, arguments)], str(Path(__file__).parents[1])
+    run = subprocess.run(command, capture_output=True, text=True, cwd=root, timeout=300)
+    assert run.returncode == 0, run.stderr
+    return json.loads(run.stdout)
 
 
 def test_one_time_of_twenty_gigabytes(tmp_path):
@@ -286,16 +297,30 @@ def test_one_time_of_twenty_gigabytes(tmp_path):
     logical = sum(v.nbytes for v in xr.open_zarr(path, consolidated=False).values())
     real = sum(file.stat().st_size for file in path.rglob("*") if file.is_file())
     assert logical > 20e9 and real < 20e6
-    root = str(Path(__file__).parents[1])
-    run = subprocess.run(
-        [sys.executable, "-c", OPEN_ONE_TIME, str(path)], capture_output=True, text=True, cwd=root, timeout=300
-    )
-    assert run.returncode == 0, run.stderr
-    found = json.loads(run.stdout)
+    found = open_one_time(path)
     assert found["times"] == 72 and found["warm"] == 260.0
     assert found["lowest"] == pytest.approx(0.991 * 1e5)
-    assert found["peak"] < 2e9
+    assert found["peak"] < 2e9 and not found["lazy"]
     assert resource.getrusage(resource.RUSAGE_SELF).ru_maxrss * 1024 < 20e9  # nor was it built in memory
+
+
+def test_one_time_larger_than_what_is_read_at_once_stays_lazy(tmp_path):
+    path = tmp_path / "wide.zarr"
+    write_big_zarr(path, cells=1_600_000, times=3)
+    found = open_one_time(path, "part")
+    assert found["lazy"] and found["warm"] == 260.0
+    assert found["peak"] < 2e9
+
+
+@pytest.mark.parametrize("vertical", VERTICALS)
+def test_lazy_equals_eager_in_every_vertical_coordinate(vertical, monkeypatch):
+    eager = open_scene(model_file(vertical, "regular"))
+    monkeypatch.setattr(reading, "_EAGER_BYTES", 1000.0)
+    lazy = open_scene(model_file(vertical, "regular"))
+    for name in ("pressure", "temperature", "specific_humidity", "cloud_liquid"):
+        assert lazy[name].chunks, name
+        np.testing.assert_allclose(lazy[name].values, eager[name].values, rtol=1e-12)
+    assert "This source can be used" in describe_scene(model_file(vertical, "regular"))
 
 
 # --- values that cannot be ----------------------------------------------------------------------------

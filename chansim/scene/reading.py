@@ -109,8 +109,10 @@ def _chunk_if_large(found):
     whole = [part for f in found.fields.values() for part in (f.parts or (f,))]
     if sum(f.data.nbytes for f in whole) <= _EAGER_BYTES:
         return
-    for f in whole:
-        f.data = f.data.chunk({d: -1 if d == f.level_dim else "auto" for d in f.data.dims})
+    sizes = {}  # of the largest field, for all: pieces that fit together
+    for f in sorted(whole, key=lambda f: -f.data.nbytes):
+        f.data = f.data.chunk({d: -1 if d == f.level_dim else sizes.get(d, "auto") for d in f.data.dims})
+        sizes = {d: n for d, n in f.data.chunksizes.items() if d != f.level_dim} | sizes
 
 
 @dataclass
@@ -129,7 +131,7 @@ def _make_scene(opened, found, assembled, relative_humidity_over=None):
     over = _saturation(opened, found, relative_humidity_over)
     plan = make_plan(found, relative_humidity_over=over, day_of_year=_day_of_year(opened.time))
     tally = Tally()
-    if raw.chunks or (pressure.ndim > 1 and pressure.chunks):
+    if _is_lazy(raw) or (pressure.ndim > 1 and pressure.chunks):
         scene = _lazy_columns(assembled, plan)
     else:
         scene = _eager_columns(assembled, plan, opened.name, tally)
@@ -137,6 +139,10 @@ def _make_scene(opened, found, assembled, relative_humidity_over=None):
         found.log.append(f"relative humidity taken as relative to saturation over {over.replace('_', ' ')}")
     _finish(scene, opened, found, plan, grid, notes, tally)
     return scene
+
+
+def _is_lazy(dataset):
+    return any(variable.chunks for variable in dataset.variables.values())
 
 
 def _recognise(opened, mapping):
@@ -279,11 +285,12 @@ def _as_dataset(columns, dims, plan, half=None):
 def _lazy_columns(assembled, plan):
     """The same, chunk by chunk when the values are asked for."""
     raw, grid = assembled.raw, assembled.grid
-    block = raw.chunk({"level": -1})
+    block = raw.unify_chunks().chunk({"level": -1})
     block["__pressure"] = assembled.pressure
     if assembled.half_pressure is not None:
         block["__half_pressure"] = assembled.half_pressure
     block = block.assign(__latitude=grid.latitude, __longitude=grid.longitude)
+    block = block.unify_chunks()
     vertical = {d: -1 for d in ("level", "half_level") if d in block.dims}
     block = block.chunk({d: block.chunksizes.get(d, -1) for d in grid.dims} | vertical).unify_chunks()
 
@@ -388,7 +395,7 @@ def describe_scene(source, *, time=None, mapping=None, select=None):
             assembled = _assemble(opened, found, vertical)
         notes = assembled.notes
         lines.append(grid_in_words(assembled.pressure, assembled.grid))
-        if not assembled.raw.chunks:  # a larger one is not read just to be described
+        if not _is_lazy(assembled.raw):  # a larger one is not read just to be described
             scene = _make_scene(opened, found, assembled)
     except SceneError as error:
         problems.append(str(error))
