@@ -110,6 +110,67 @@ def test_half_levels_from_the_bounds():
         assert scene["half_pressure"].dims == ("half_level", "cell") and scene["half_pressure"].attrs["units"] == "Pa"
 
 
+def test_half_levels_from_bounds_with_a_and_p0():
+    attrs = {"formula_terms": "p0: p0 a: a b: b ps: PS", "bounds": "lev_bnds"}
+    data = two_columns(standard_name=CF.format("hybrid_sigma_pressure"), **attrs)
+    data["p0"] = ((), 1e5, {"units": "Pa"})
+    data["lev_bnds"] = (("lev", "bnds"), np.zeros((3, 2)), {"formula_terms": "p0: p0 a: a_bnds b: b_bnds ps: PS"})
+    for name, half in (("a", HALF_AP / 1e5), ("b", HALF_B)):
+        data[name] = ("lev", 0.5 * (half[1:] + half[:-1]))
+        data[f"{name}_bnds"] = (("lev", "bnds"), np.stack([half[:-1], half[1:]], axis=1))
+    np.testing.assert_allclose(open_scene(data)["half_pressure"], HALF_BY_HAND)
+
+
+def test_converted_grib_with_surface_pressure_on_a_level_of_its_own():
+    terms = "ap: hyam b: hybm ps: lnsp"
+    data = two_columns(standard_name="hybrid_sigma_pressure", formula_terms=terms).drop_vars("PS")
+    logarithm = {"long_name": "Logarithm of surface pressure"}
+    data["lnsp"] = (("lev_2", "cell"), np.log([[1e5, 6e4]]), logarithm)
+    data["lev_2"] = ("lev_2", [1.0], {"axis": "Z", "positive": "down"})
+    for name, half, units in (("hya", HALF_AP, "Pa"), ("hyb", HALF_B, "1")):
+        data[f"{name}m"] = ("nhym", 0.5 * (half[1:] + half[:-1]), {"units": units})
+        data[f"{name}i"] = ("nhyi", half, {"units": units})
+    scene = open_scene(data)
+    np.testing.assert_allclose(scene["pressure"], MEANS_BY_HAND)
+    np.testing.assert_allclose(scene["half_pressure"], HALF_BY_HAND, atol=1e-6)
+    without = open_scene(data.drop_vars("hyai"))
+    np.testing.assert_allclose(without["pressure"], MEANS_BY_HAND)
+    assert "half_pressure" not in without
+
+
+@pytest.mark.parametrize("given", ["both", "between", "one for all columns"])
+def test_pressure_fields_on_and_between_the_levels(given):
+    data = two_columns()
+    data["PS"].attrs["standard_name"] = "surface_air_pressure"
+    attrs = {"standard_name": "air_pressure", "units": "Pa"}
+    if given == "one for all columns":
+        scene = open_scene(data.assign(p=("lev", [1000.0, 18000.0, 67000.0], attrs)))
+        np.testing.assert_allclose(scene["pressure"], [1000.0, 18000.0, 67000.0])
+        return
+    data["p_half"] = (("lev_half", "cell"), HALF_BY_HAND, attrs)
+    if given == "both":
+        data["p_full"] = (("lev", "cell"), np.array(MEANS_BY_HAND) * 0.99, attrs)  # not quite the means
+    scene = open_scene(data)
+    np.testing.assert_allclose(scene["pressure"], np.array(MEANS_BY_HAND) * (0.99 if given == "both" else 1.0))
+    np.testing.assert_allclose(scene["half_pressure"], HALF_BY_HAND)
+
+
+def test_half_levels_that_do_not_fit_their_levels():
+    data = two_columns()
+    data["PS"].attrs["standard_name"] = "surface_air_pressure"
+    attrs = {"standard_name": "air_pressure", "units": "Pa"}
+    data["p_full"] = (("lev", "cell"), [[1000.0, 1000.0], [40000.0, 12000.0], [67000.0, 41000.0]], attrs)
+    data["p_half"] = (("lev_half", "cell"), HALF_BY_HAND, attrs)
+    with pytest.raises(SceneError, match="half_pressure: 1 levels do not lie between their half levels.*level 2"):
+        open_scene(data)
+
+
+def test_a_single_column_on_hybrid_levels():
+    scene = open_scene(hybrid().isel(cell=0))
+    assert scene["temperature"].dims == ("level", "cell") and scene.sizes["cell"] == 1
+    np.testing.assert_allclose(scene["pressure"], np.array(BY_HAND)[:, 0])
+
+
 @pytest.mark.parametrize("full", [True, False])
 def test_half_levels_under_the_names_of_converters(full):
     data = two_columns(standard_name=CF.format("hybrid_sigma_pressure"))

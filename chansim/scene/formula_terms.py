@@ -233,7 +233,8 @@ def _from_attributes(search, coord):
                 f"{', '.join(f'atmosphere_{k}_coordinate' for k in KINDS)}; give its standard_name"
             )
     parametric = _complete(search, kind, names, f"formula_terms of {coord.name}")
-    parametric.half = parametric.half or _half_from_bounds(search, coord, parametric)
+    if kind == "hybrid_sigma_pressure" and not parametric.half:
+        parametric.half = _half_from_bounds(search, coord, parametric) or _half_from_plain_names(search)
     return parametric
 
 
@@ -334,7 +335,7 @@ def _toml(value):
 def _half_from_bounds(search, coord, parametric):
     """Half-level coefficients from the bounds of the coordinate, whose own formula_terms name them."""
     dataset, bounds = search.opened.dataset, coord.attrs.get("bounds", coord.encoding.get("bounds"))
-    if dataset is None or bounds not in dataset.variables or parametric.kind != "hybrid_sigma_pressure":
+    if dataset is None or bounds not in dataset.variables:
         return {}
     text = dataset[bounds].attrs.get("formula_terms", dataset[bounds].encoding.get("formula_terms"))
     if text is None:
@@ -419,6 +420,21 @@ def _from_plain_names(search):
             names = {"ap" if base == 1.0 else "a": a, "b": b} | ({} if base == 1.0 else {"p0": base})
         return _complete(search, "hybrid_sigma_pressure", names, f"the variables {a if on_full else a_half}", half)
     return None
+
+
+def _half_from_plain_names(search):
+    """Half-level coefficients that converters add beside formula terms; {} when they are absent or do not fit."""
+    for _, _, a_half, b_half in _PLAIN_NAMES:
+        if search.opened.dataset is None or not (search.has(a_half) and search.has(b_half)):
+            continue
+        try:
+            units, base = _unit_of_a(search, a_half)
+            half = {"ap": _half_values(search, a_half, units, "ap"), "b": _half_values(search, b_half, "1", "b")}
+        except SceneError:  # they are a bonus; the levels have their own terms
+            return {}
+        if half["ap"] is not None and half["b"] is not None:
+            return {"ap": half["ap"] * base, "b": half["b"]}
+    return {}
 
 
 def _unit_of_a(search, name):

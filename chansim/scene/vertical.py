@@ -60,7 +60,7 @@ def level_pressure(temperature, recognised, opened, vertical=None):
         log.append(f"pressure <- coordinate {dim} [{coord.attrs['units']}]")
         return LevelPressure(convert(coord.astype(float), coord.attrs["units"], "Pa", str(dim)))
     if not asked:
-        given = _given_pressure(temperature, recognised)
+        given = _given_pressure(temperature, recognised, opened)
         if given is not None:
             return given
     parametric = find_parametric(temperature, recognised, opened, vertical)
@@ -76,7 +76,7 @@ def level_pressure(temperature, recognised, opened, vertical=None):
     return LevelPressure(found)
 
 
-def _given_pressure(temperature, recognised):
+def _given_pressure(temperature, recognised, opened):
     """Pressure, or the Exner function, as a field on the levels or between them; None when there is none."""
     for quantity, units in (("pressure", "Pa"), ("exner_function", "1")):
         given = recognised.fields.get(quantity)
@@ -86,7 +86,7 @@ def _given_pressure(temperature, recognised):
         values = values if quantity == "pressure" else hydrostatic.pressure_from_exner(values)
         count = temperature.data.sizes[temperature.level_dim]
         if given.level_dim == temperature.level_dim and values.sizes[given.level_dim] == count:
-            return LevelPressure(values, _given_half_pressure(temperature, recognised))
+            return LevelPressure(values, _given_half_pressure(temperature, recognised, opened))
         full = on_full_levels(given, values, temperature.level_dim, count, "pressure")
         if full is not None:
             recognised.log.append(f"pressure: {given.name} lies between the levels; their means are taken on them")
@@ -94,13 +94,21 @@ def _given_pressure(temperature, recognised):
     return None
 
 
-def _given_half_pressure(temperature, recognised):
-    half = recognised.fields.get("half_pressure")
-    if half is None or half.data.sizes[half.level_dim] != temperature.data.sizes[temperature.level_dim] + 1:
-        return None
-    values = convert(half.data.astype(float), recognised.units["half_pressure"], "Pa", half.name)
-    values = _without_coords(values)
-    return values.rename({half.level_dim: "half_level"}) if half.level_dim != "half_level" else values
+def _given_half_pressure(temperature, recognised, opened):
+    """Pressure between the levels as the file gives it beside that on them; None when it does not."""
+    wanted = {**temperature.data.sizes, temperature.level_dim: temperature.data.sizes[temperature.level_dim] + 1}
+    candidates = [f for f in opened.fields if f.evidence.get("standard_name") == "air_pressure"]
+    if (half := recognised.fields.get("half_pressure")) is not None:
+        candidates.insert(0, half)
+    for f in candidates:
+        if f.place != "levels" or sorted(f.data.sizes.values()) != sorted(wanted.values()):
+            continue
+        if f.data.sizes[f.level_dim] != wanted[temperature.level_dim]:
+            continue
+        recognised.log.append(f"half_pressure <- {f.name} [{f.units}]")
+        values = _without_coords(convert(f.data.astype(float), f.units, "Pa", f.name))
+        return values.rename({f.level_dim: "half_level"}) if f.level_dim != "half_level" else values
+    return None
 
 
 def _without_coords(data):
