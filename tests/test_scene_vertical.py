@@ -222,7 +222,7 @@ def test_missing_terms_say_which_and_how_to_give_them():
     with pytest.raises(SceneError, match=r"term b should be 'b', which is not in.*\[vertical\] b ="):
         open_scene(hybrid().drop_vars("b"))
     with pytest.raises(
-        SceneError, match=r"ps \(surface pressure.* is missing.*\[vertical\] coordinate = \"hybrid_sigma"
+        SceneError, match=r"(?s)ps \(surface pressure.* is missing.*\[vertical\]\s+coordinate = \"hybrid_sigma"
     ):
         open_scene(hybrid("ap: ap b: b").rename(PS="unlabelled"))
     with pytest.raises(SceneError, match="formula_terms 'ap ap b' cannot be read; it is written"):
@@ -230,9 +230,29 @@ def test_missing_terms_say_which_and_how_to_give_them():
     assert "Problems:" in describe_scene(hybrid().drop_vars("b"))
 
 
+@pytest.mark.parametrize("units", [None, "furlongs", "m"])
+def test_units_of_a_term(units):
+    data = hybrid()
+    data["ap"].attrs = {} if units is None else {"units": units}
+    with pytest.raises(SceneError, match=f"term ap = ap has units '{units}', but Pa is needed"):
+        open_scene(data)
+
+
+def test_the_fix_in_the_message_is_toml_that_works(tmp_path):
+    data = hybrid("ap: ap ps: PS").assign(share=("lev", [0.0, 0.15, 0.67])).drop_vars("b")
+    with pytest.raises(SceneError) as error:
+        open_scene(data)
+    snippet = str(error.value).split("mapping file:")[1].replace('b = "NAME"', 'b = "share"')
+    (tmp_path / "fix.toml").write_text(snippet)
+    np.testing.assert_allclose(pressure_of(data, mapping=tmp_path / "fix.toml"), BY_HAND)
+    assert snippet.splitlines()[1].strip() in describe_scene(data)
+
+
 def test_terms_by_mapping_file(tmp_path):
     data = two_columns().assign(A=("lev", [10.0, 30.0, 20.0], {"units": "hPa"}), B=("lev", [0.0, 0.15, 0.67]))
-    with pytest.raises(SceneError, match=r"give no pressure.*\[vertical\] coordinate = \"hybrid_sigma_pressure\""):
+    with pytest.raises(
+        SceneError, match=r"(?s)give no pressure.*\[vertical\]\s+coordinate = \"hybrid_sigma_pressure\""
+    ):
         open_scene(data)
     file = tmp_path / "model.toml"
     file.write_text('[vertical]\ncoordinate = "hybrid_sigma_pressure"\nap = "A"\nb = "B"\nps = "PS"\n')
@@ -257,7 +277,7 @@ def test_half_level_terms_by_mapping():
         ({"ap": "A"}, 'needs a line coordinate = "..."'),
         ({"coordinate": "sigma", "b": "B"}, "'b' is no term of sigma; it has sigma, ps, ptop"),
         ({"coordinate": "sigma", "sigma": "nowhere", "ps": "PS", "ptop": 0.0}, "should be 'nowhere', which is not in"),
-        ({"coordinate": "sigma", "sigma": "lev"}, "ptop .*missing"),
+        ({"coordinate": "sigma", "sigma": "lev"}, "(?s)ptop .*missing"),
     ],
 )
 def test_wrong_mapping_of_the_vertical(table, message):
@@ -381,7 +401,7 @@ def test_hydrostatic_pressure_from_a_known_level(high_levels):
     data, expected = high_levels
     data = data.drop_vars("ps").assign(top=("ncells", expected[10], {"units": "Pa"}))
     heights = columns()["height"][10, np.arange(6) % 2]
-    with pytest.raises(SceneError, match=r"surface pressure .* is missing.*known_pressure"):
+    with pytest.raises(SceneError, match=r"(?s)surface pressure .* is missing.*known_pressure"):
         open_scene(data)
     data["level_height"] = ("ncells", heights, {"units": "m"})
     mapping = {"vertical": {"known_pressure": "top", "known_height": "level_height"}}
@@ -450,7 +470,7 @@ def test_half_level_heights_are_averaged_and_a_cut_is_noticed():
 def test_heights_without_orography():
     data = model_file("pressure field").drop_vars(["pfull", "orog"])
     data["lev"] = ("lev", columns()["height"][:, 0], {"standard_name": "altitude", "units": "m"})
-    with pytest.raises(SceneError, match=r"height of the ground .*is missing.*orography = \"NAME\""):
+    with pytest.raises(SceneError, match=r"(?s)height of the ground .*is missing.*orography = \"NAME\""):
         open_scene(data)
 
 
@@ -557,7 +577,7 @@ def test_history_file_of_a_mesoscale_model(tmp_path):
 
 
 def test_the_perturbation_alone_is_no_pressure():
-    with pytest.raises(SceneError, match="geopotential|give no pressure|missing"):
+    with pytest.raises(SceneError, match="(?s)geopotential|give no pressure|missing"):
         open_scene(model_file("native", "cells").drop_vars(["PB", "ps"]))
 
 
@@ -647,7 +667,7 @@ def test_grib_coefficients_of_wrong_length(tmp_path):
 def test_grib_hybrid_levels_without_coefficients(tmp_path):
     file = tmp_path / "hybrid.grb"
     write_any_grib(file, "regular_ll_pl_grib2", hybrid_messages(None))
-    with pytest.raises(SceneError, match=r"ap .or a and p0., b are missing.*\[vertical\]"):
+    with pytest.raises(SceneError, match=r"(?s)ap .or a and p0., b are missing.*\[vertical\]"):
         open_scene(file)
     table = {"coordinate": "hybrid_sigma_pressure", "ap_half": list(HALF_AP), "b_half": list(HALF_B)}
     found = open_scene(file, mapping={"vertical": table})["pressure"].values[:, 0, 0]

@@ -111,7 +111,13 @@ class _Search:
         data = data.drop_vars(list(data.coords))
         if data.dtype.kind != "f":
             data = data.astype(float)
-        data = convert(data, own_units, units, name)
+        try:
+            data = convert(data, own_units, units, name)
+        except SceneError as error:
+            raise SceneError(
+                f"vertical coordinate: term {term} = {name} has units '{own_units}', but {units} is needed; correct "
+                f"its units attribute, or give numbers in {units} in the mapping file:\n  [vertical]\n  {term} = [...]"
+            ) from error
         return data if data.ndim == 0 or set(data.dims) <= self._column_dims() else self._on_levels(data, name)
 
     def _variable(self, name, term):
@@ -322,7 +328,7 @@ def _missing_terms(search, kind, names, missing, origin):
     return (
         f"{search.temperature.name}: its levels '{search.dim}' are a {kind.replace('_', ' ')} coordinate "
         f"(atmosphere_{kind}_coordinate, by {origin}), but {named} {'is' if len(missing) == 1 else 'are'} missing, so "
-        "they give no pressure. Add to the mapping file: [vertical] " + "; ".join(lines)
+        "they give no pressure. Add to the mapping file:" + "".join(f"\n  {line}" for line in ["[vertical]", *lines])
     )
 
 

@@ -103,8 +103,9 @@ def _start(recognised, opened, table, above_ground, name):
     if missing:
         raise SceneError(
             f"heights {name}: pressure can be integrated over them, but the {' and the '.join(missing)} is missing. "
-            'Add it, or name it in the mapping file: [variables] surface_pressure = "NAME", orography = "NAME"; or '
-            "say where pressure is known: [vertical] known_pressure = 5500.0, known_height = 20000.0"
+            "Add it, or name it in the mapping file:\n"
+            '  [variables]\n  surface_pressure = "NAME"\n  orography = "NAME"\n'
+            "or say where pressure is known [Pa, m]:\n  [vertical]\n  known_pressure = 5500.0\n  known_height = 20000.0"
         )
     return pressure, 0.0 if above_ground else ground, ground, "surface pressure"
 

@@ -7,7 +7,7 @@ import pyproj
 import xarray as xr
 
 from chansim.errors import SceneError
-from chansim.scene.sources import is_latitude, is_longitude
+from chansim.scene.dataset_fields import is_latitude, is_longitude
 from chansim.scene.units import convert
 
 _REGULARITY = 0.02  # largest departure from a regular projected grid, in grid lengths

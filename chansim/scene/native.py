@@ -10,8 +10,8 @@ from dataclasses import replace
 import xarray as xr
 
 from chansim.errors import SceneError
+from chansim.scene.dataset_fields import unstaggered_name
 from chansim.scene.recognition import QUANTITIES, Field
-from chansim.scene.sources import unstaggered_name
 from chansim.scene.units import convert
 
 # the constant that mesoscale models take from potential temperature before they write it

@@ -1,5 +1,6 @@
 """Model file to canonical scene: `open_scene`; what a file has and lacks: `describe_scene`."""
 
+import textwrap
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -406,7 +407,11 @@ def describe_scene(source, *, time=None, mapping=None, select=None):
     if scene is not None:
         adjusted = scene.attrs["adjusted"].splitlines()
         lines += ["", f"Columns masked for missing values: {scene.attrs['masked_columns']}", *adjusted]
-    lines += ["", "Problems:" if problems else "This source can be used.", *(f"  {p}" for p in problems)]
+    lines += [
+        "",
+        "Problems:" if problems else "This source can be used.",
+        *(textwrap.indent(p, "  ") for p in problems),
+    ]
     return "\n".join(lines)
 
 

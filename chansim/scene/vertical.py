@@ -172,12 +172,27 @@ def _no_pressure(temperature, coord, recognised):
     beside = f" ({other.name} lies on '{other.level_dim}', which has another number of levels)" if other else ""
     return (
         f"{temperature.name}: its levels '{temperature.level_dim}' ({kind}) give no pressure{beside}. Add a field with "
-        "standard_name 'air_pressure' on the same levels, give the coordinate pressure units, or say in a mapping "
-        'file one of: [variables] pressure = "its name"; [variables] pressure = {sum = ["BASE", "PERTURBATION"]}; '
-        '[vertical] coordinate = "hybrid_sigma_pressure", ap = "NAME", b = "NAME", ps = "NAME"; [vertical] '
-        'coordinate = "sigma", sigma = "NAME", ps = "NAME", ptop = 0.0; or give heights of the levels (standard_name '
-        "altitude or geopotential_height) with surface pressure and orography"
+        "standard_name 'air_pressure' on the same levels, or heights of the levels (standard_name altitude or "
+        "geopotential_height) with surface pressure and orography, or give the coordinate pressure units, or say in a "
+        f"mapping file one of:{_EXAMPLES}"
     )
+
+
+_EXAMPLES = """
+  [variables]
+  pressure = "NAME"                     # or {sum = ["BASE", "PERTURBATION"]}
+or
+  [vertical]
+  coordinate = "hybrid_sigma_pressure"
+  ap = "NAME"
+  b = "NAME"
+  ps = "NAME"
+or
+  [vertical]
+  coordinate = "sigma"
+  sigma = "NAME"
+  ps = "NAME"
+  ptop = 0.0"""
 
 
 def _is_pressure(coord):
