@@ -484,19 +484,24 @@ def test_pressure_from_density_by_hand():
     assert hydrostatic.pressure_from_density_and_potential(1.2, 290.08693) == pytest.approx(99895.1, rel=2e-6)
 
 
+@pytest.mark.parametrize("dry", [False, True])
 @pytest.mark.parametrize("potential", [False, True])
-def test_pressure_from_density_in_a_file(potential):
+def test_pressure_from_density_in_a_file(potential, dry):
     data, pressure = model_file("pressure field").drop_vars("pfull"), columns()["pressure"][:, np.arange(6) % 2]
     calc = pytest.importorskip("metpy.calc", reason="MetPy is not installed")
     from metpy.units import units
 
     ratio = humidity_at(pressure) / (1.0 - humidity_at(pressure))
     density = calc.density(pressure * units.Pa, temperature_at(pressure) * units.K, ratio * units.dimensionless)
-    data["rho"] = (
-        ("lev", "ncells"),
-        density.to("kg/m^3").magnitude,
-        {"standard_name": "air_density", "units": "kg m-3"},
-    )
+    density = density.to("kg/m^3").magnitude
+    if dry:
+        data["rho_d"] = (
+            ("lev", "ncells"),
+            density / (1.0 + ratio),
+            {"long_name": "dry air density", "units": "kg m-3"},
+        )
+    else:
+        data["rho"] = (("lev", "ncells"), density, {"standard_name": "air_density", "units": "kg m-3"})
     if potential:
         data["t"] = (data["t"].dims, data["t"].values * (1e5 / pressure) ** (2.0 / 7.0), {
             "standard_name": "air_potential_temperature", "units": "K"})  # fmt: skip

@@ -1,5 +1,8 @@
 """Pressure where the file has none: from heights in hydrostatic balance, or from the density of the air."""
 
+import functools
+import re
+
 import numpy as np
 import xarray as xr
 
@@ -53,8 +56,12 @@ def pressure_by_density(temperature, recognised):
     if density is None or density.level_dim != temperature.level_dim:
         return None
     values = convert(density.data.astype(float), recognised.units["air_density"], "kg m-3", density.name)
-    recognised.log.append(f"pressure <- ideal gas law, from the density {density.name}")
-    return _in_columns(_ideal_gas, temperature, recognised, [values], grows="downward")
+    label = f"{density.name} {density.evidence.get('long_name', '')}".lower()
+    of_dry_air = re.search(r"\bdry\b|rho_?d(ry)?\b", label) is not None
+    words = f"the density {density.name}{', of dry air by its name' if of_dry_air else ''}"
+    recognised.log.append(f"pressure <- ideal gas law, from {words}")
+    work = functools.partial(_ideal_gas, of_dry_air=of_dry_air)
+    return _in_columns(work, temperature, recognised, [values], grows="downward")
 
 
 def _heights(temperature, recognised):
@@ -222,11 +229,12 @@ def _rounds(kind, potential):
     return 1 if kind in ("specific_humidity", "humidity_mixing_ratio", "dry") else _TIMES
 
 
-def _ideal_gas(warmth, moisture, density, *, kind, potential):
+def _ideal_gas(warmth, moisture, density, *, kind, potential, of_dry_air):
     law = hydrostatic.pressure_from_density_and_potential if potential else hydrostatic.pressure_from_density
     pressure = law(density, warmth)
     for _ in range(_TIMES):
         temperature = hydrostatic.temperature_from_potential(warmth, pressure) if potential else warmth
         moist = _specific_humidity(moisture, kind, temperature, pressure)
-        pressure = law(density, humidity.virtual_temperature(warmth, moist))
+        whole = density / (1.0 - moist) if of_dry_air else density
+        pressure = law(whole, humidity.virtual_temperature(warmth, moist))
     return pressure

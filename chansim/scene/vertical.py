@@ -169,7 +169,7 @@ def _no_pressure(temperature, coord, recognised):
     if coord is not None:
         kind = coord.attrs.get("standard_name") or coord.attrs.get("long_name") or "no standard name"
     other = recognised.fields.get("pressure")
-    beside = f" ({other.name} lies on '{other.level_dim}', which has another number of levels)" if other else ""
+    beside = f" ({other.name} lies on other levels, '{other.level_dim}')" if other else ""
     return (
         f"{temperature.name}: its levels '{temperature.level_dim}' ({kind}) give no pressure{beside}. Add a field with "
         "standard_name 'air_pressure' on the same levels, or heights of the levels (standard_name altitude or "
