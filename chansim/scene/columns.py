@@ -68,9 +68,7 @@ def make_plan(recognised, *, relative_humidity_over="water", day_of_year=None):
     plan = Plan({}, relative_humidity_over, day_of_year)
     have = recognised.fields
     plan.sources = {name: f.name for name, f in have.items()}
-    plan.conversions = {
-        name: linear_conversion(recognised.units[name], QUANTITIES[name].units, f.name) for name, f in have.items()
-    }
+    plan.conversions = {name: _conversion(name, f, recognised.units[name]) for name, f in have.items()}
 
     def choose(canonical, *quantities):
         found = [q for q in quantities if q in have]
@@ -99,6 +97,13 @@ def make_plan(recognised, *, relative_humidity_over="water", day_of_year=None):
         choose("wind_speed_10m", "wind_speed_10m", "eastward_wind_10m")
     plan.outputs = _outputs(plan)
     return plan
+
+
+def _conversion(name, f, units):
+    try:
+        return linear_conversion(units, QUANTITIES[name].units, f.name)
+    except SceneError as error:  # which quantity it is for makes the advice complete
+        raise SceneError(str(error).replace("QUANTITY", name)) from error
 
 
 def _outputs(plan):

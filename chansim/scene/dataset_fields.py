@@ -118,7 +118,8 @@ def _dataset_field(data, dataset, horizontal):
     if not levels and len(extra) == 1 and extra[0] not in dataset.variables and horizontal:
         levels, extra = extra, []  # the one dimension left over
     if extra or len(levels) > 1:
-        place, level_dim = f"extra dimension {', '.join(map(str, extra or levels))}", ""
+        along = f", while the places lie along {', '.join(map(str, horizontal))}" if horizontal and extra else ""
+        place, level_dim = f"extra dimension {', '.join(map(str, extra or levels))}{along}", ""
     elif levels:
         place, level_dim = "levels", levels[0]
     else:

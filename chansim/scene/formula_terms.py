@@ -125,10 +125,7 @@ class _Search:
             return self.by_name[name].data, self.by_name[name].units
         dataset = self.opened.dataset
         if dataset is None or name not in dataset.variables:
-            raise SceneError(
-                f"vertical coordinate of {self.temperature.name}: its term {term} should be '{name}', which is not in "
-                f'{self.opened.name}; add it, or name what it is called there: [vertical] {term} = "..."'
-            )
+            raise SceneError(f"vertical coordinate: the term {term} should be '{name}', which is not in the file")
         data = dataset[name]
         data = data.isel({d: 0 for d in data.dims if data.sizes[d] == 1 and d != self.dim})
         return data, data.attrs.get("units")
@@ -290,6 +287,9 @@ def _complete(search, kind, names, origin, half=None):
     """The coordinate with all its terms, or an error that lists those missing."""
     units = KINDS[kind]
     half = half if half and all(v is not None for v in half.values()) else {}
+    absent = [t for t, name in names.items() if t in units and isinstance(name, str) and not search.has(name)]
+    if absent:
+        raise SceneError(_missing_terms(search, kind, names, absent, origin))
     terms = {term: search.named(name, units[term], term) for term, name in names.items() if term in units}
     _take_base_pressure(search, kind, names, terms)
     for term in ("ap", "b"):
@@ -322,9 +322,11 @@ def _in_words(value):
 
 def _missing_terms(search, kind, names, missing, origin):
     wanted = {"ap": "ap (or a and p0)", "ps": "ps (surface pressure, or its logarithm)", "orog": "orog (orography)"}
-    lines = [f'coordinate = "{kind}"', *(f"{term} = {_toml(name)}" for term, name in names.items())]
+    present = {term: name for term, name in names.items() if term not in missing}
+    lines = [f'coordinate = "{kind}"', *(f"{term} = {_toml(name)}" for term, name in present.items())]
     lines += [f'{term} = "NAME"' for term in missing]
-    named = ", ".join(wanted.get(m, m) for m in missing)
+    sought = {term: f" (sought as '{names[term]}')" if term in names else "" for term in missing}
+    named = ", ".join(wanted.get(m, m) + sought[m] for m in missing)
     return (
         f"{search.temperature.name}: its levels '{search.dim}' are a {kind.replace('_', ' ')} coordinate "
         f"(atmosphere_{kind}_coordinate, by {origin}), but {named} {'is' if len(missing) == 1 else 'are'} missing, so "
