@@ -432,6 +432,14 @@ def test_hydrostatic_pressure_on_height_levels(kind):
         np.testing.assert_allclose(open_scene(given)["pressure"].values, np.repeat(expected[:, None], 3, 1), rtol=3e-4)
 
 
+def test_heights_instead_of_a_pressure_field_by_mapping(high_levels):
+    data, expected = high_levels
+    data["wrong"] = (("lev", "ncells"), expected * 1.1, {"standard_name": "air_pressure", "units": "Pa"})
+    np.testing.assert_allclose(open_scene(data)["pressure"], expected * 1.1)
+    found = open_scene(data, mapping={"vertical": {"coordinate": "height"}})
+    np.testing.assert_allclose(found["pressure"], expected, rtol=3e-4)
+
+
 def test_height_above_ground_needs_no_orography():
     data = model_file("pressure field").isel(ncells=[1, 3]).drop_vars(["pfull", "lev", "clw", "cli", "orog"])
     above = columns()["height"][:, 1] - 1500.0

@@ -417,6 +417,10 @@ def describe_scene(source, *, time=None, mapping=None, select=None):
 
 def _open_first(source, time, select):
     """The source at the first time and of the first member where none is named; lines on the members."""
+    try:
+        return open_source(source, time=time, select=select), []
+    except SceneError:
+        pass  # several times or members; when it is something else, it is met again below
     members = {dim: labels for dim, labels in scene_members(source).items() if dim not in (select or {})}
     lines = []
     for dim, labels in members.items():
