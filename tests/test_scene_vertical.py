@@ -568,7 +568,7 @@ def test_sums_and_constants_by_mapping_file(tmp_path):
     file = tmp_path / "native.toml"
     file.write_text(
         '[variables]\npressure = {sum = ["P", "PB"]}\npotential_temperature = {name = "T", add = 300.0, units = "K"}\n'
-        'temperature = ""\ngeopotential = {sum = ["PH", "PHB"], staggered = "bottom_top_stag"}\n'
+        'geopotential = {sum = ["PH", "PHB"], staggered = "bottom_top_stag"}\n'
     )
     found, expected = open_scene(data, mapping=file), open_scene(model_file("native", "cells"))
     for name in ("pressure", "temperature", "height"):

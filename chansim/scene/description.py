@@ -70,7 +70,8 @@ def _how_to_supply(plan, unused):
     lines = ["", "To supply one of these, add it to the source with its standard name, or keep lines like these in a"]
     lines += ['file my_model.toml and say open_scene(source, mapping="my_model.toml"):', "  [variables]"]
     for variable in VARIABLES.values():
-        if variable.kind not in ("level", "surface") or not variable.default or variable.name in plan.routes:
+        wanted = variable.default or variable.name in ("temperature", "specific_humidity")
+        if variable.kind not in ("level", "surface") or not wanted or variable.name in plan.routes:
             continue
         candidates = [f.name for f in unused if _may_be(variable, f)]
         if candidates or variable.name in _OFTEN_SUPPLIED:

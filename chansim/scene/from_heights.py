@@ -134,9 +134,9 @@ def _in_columns(work, temperature, recognised, arguments, *, grows):
     The first of the arguments lies on the levels, and grows "upward" or "downward".
     """
     dim = temperature.level_dim
-    potential = "temperature" not in recognised.fields
-    warmth = recognised.fields["potential_temperature" if potential else "temperature"]
-    kelvin = convert(warmth.data.astype(float), recognised.units[_name_of(recognised, warmth)], "K", warmth.name)
+    name = next(name for name, f in recognised.fields.items() if f is temperature)
+    potential = name == "potential_temperature"
+    kelvin = convert(temperature.data.astype(float), recognised.units[name], "K", temperature.name)
     moisture, kind = _moisture(temperature, recognised)
     inputs = [_bare(kelvin), moisture, *arguments]
     chunks = {d: n for d, n in kelvin.chunksizes.items()} if kelvin.chunks else {}
@@ -156,10 +156,6 @@ def _in_columns(work, temperature, recognised, arguments, *, grows):
         on_arrays, *inputs, input_core_dims=core, output_core_dims=[[dim]], dask="parallelized", output_dtypes=[float]
     )
     return found.transpose(*[d for d in kelvin.dims if d in found.dims])
-
-
-def _name_of(recognised, wanted):
-    return next(name for name, f in recognised.fields.items() if f is wanted)
 
 
 def _chunked(array, chunks, dim):

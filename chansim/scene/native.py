@@ -114,6 +114,8 @@ def _from_entry(key, entry, by_name):
     add = entry.get("add", 0.0)
     if isinstance(add, bool) or not isinstance(add, (int, float)):
         raise SceneError(f"mapping: {key}: add is a number in the units of the field, not {add!r}")
+    for part in parts:
+        part.evidence["is_part"] = True
     made = _sum(parts, float(add), entry.get("units", parts[0].units), "")
     if "staggered" in entry:
         made = _unstaggered(made, key, entry["staggered"])

@@ -169,7 +169,8 @@ def _saturation(opened, found, wanted):
 
 
 def _temperature_field(found):
-    return found.fields.get("temperature") or found.fields["potential_temperature"]
+    names = sorted(("temperature", "potential_temperature"), key=lambda name: name not in found.mapped)
+    return next(found.fields[name] for name in names if name in found.fields)
 
 
 def _day_of_year(time):

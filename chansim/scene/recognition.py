@@ -27,7 +27,8 @@ class Field:
     open : function that gives the DataArray with the coordinates of the source
     place : "levels", "surface", "2m", "10m", "single" (one level, unsaid which) or another kind of level
     level_dim : dimension of the levels, "" when place is not "levels"
-    evidence : standard_name, short_name, param_id, long_name, units as far as given
+    evidence : standard_name, short_name, param_id, long_name, units as far as given; "is_part" when it is only a part
+        of a sum that the user asks for
     parts : fields that it is the sum of, () when it is not
     """
 
@@ -291,7 +292,7 @@ def _evidence_tier(quantity, f):
         return None
     if f.name == quantity.name:
         return 0
-    if PART_OF_A_SUM.search(str(evidence.get("long_name", "")).lower()):
+    if evidence.get("is_part") or PART_OF_A_SUM.search(str(evidence.get("long_name", "")).lower()):
         return None
     standard_name = evidence.get("standard_name")
     if standard_name and standard_name in (*quantity.standard_names, _canonical_standard_name(quantity)):
