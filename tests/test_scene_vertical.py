@@ -184,6 +184,16 @@ def test_half_levels_under_the_names_of_converters(full):
     np.testing.assert_allclose(scene["half_pressure"], HALF_BY_HAND)
 
 
+def test_half_levels_of_some_of_the_levels():
+    data = two_columns(levels=2, standard_name=CF.format("hybrid_sigma_pressure"))
+    data["lev"] = ("lev", [2.0, 3.0], data["lev"].attrs)
+    data["PS"].attrs["standard_name"] = "surface_air_pressure"
+    data["hyai"], data["hybi"] = ("nhyi", HALF_AP, {"units": "Pa"}), ("nhyi", HALF_B, {"units": "1"})
+    scene = open_scene(data)
+    np.testing.assert_allclose(scene["half_pressure"], HALF_BY_HAND[1:])
+    np.testing.assert_allclose(scene["pressure"], MEANS_BY_HAND[1:])
+
+
 def test_dimensionless_coefficients_need_a_base_pressure():
     data = two_columns()
     data = data.assign(PS=data["PS"].assign_attrs(standard_name="surface_air_pressure"))
@@ -340,6 +350,14 @@ def test_hydrostatic_pressure_of_an_isothermal_dry_column_by_hand():
     height = np.array([2.0, 1.0, 0.5])[:, None] * scale
     found = hydrostatic.pressure_from_heights(height, np.full((3, 1), 250.0), np.array([1e5]), np.array([0.5 * scale]))
     np.testing.assert_allclose(found[:, 0], 1e5 * np.exp([-1.5, -0.5, 0.0]), rtol=1e-9)
+
+
+def test_hydrostatic_pressure_far_above_the_ground_by_table():
+    # US Standard Atmosphere 1976, table I, geopotential heights: 281.65 K and 898.75 hPa at 1000 m, 255.65 K and
+    # 540.20 hPa at 5000 m, from 1013.25 hPa at the ground; the lowest level stands 1 km above it
+    height, warm = np.array([[5000.0], [1000.0]]), np.array([[255.65], [281.65]])
+    found = hydrostatic.pressure_from_heights(height, warm, np.array([101325.0]), 0.0)
+    np.testing.assert_allclose(found[:, 0], [54020.0, 89875.0], rtol=3e-5)
 
 
 def test_exner_integration_of_an_isentropic_column_by_hand():
