@@ -83,3 +83,27 @@ def basic_grib_messages():
         *isobaric_messages("r", {1000: 80.0, 700: 50.0, 300: 30.0, 100: 10.0}),
         ({"shortName": "sp", "typeOfLevel": "surface"}, 101000.0),
     ]
+
+
+def write_any_grib(path, sample, messages, grid=None):
+    """Writes GRIB messages from a sample of ecCodes, on its own grid unless `grid` (keys) gives another.
+
+    messages : list of (keys, value or array); the key `pv` holds vertical coefficients or None
+    """
+    import eccodes
+
+    with open(path, "wb") as file:
+        for keys, value in messages:
+            handle = eccodes.codes_grib_new_from_samples(sample)
+            settings = {"dataDate": 20200715, "dataTime": 1200, **(grid or {}), **keys}
+            coefficients = settings.pop("pv", None)
+            for key, setting in settings.items():
+                (eccodes.codes_set_array if np.ndim(setting) else eccodes.codes_set)(handle, key, setting)
+            if coefficients is not None:
+                eccodes.codes_set(handle, "PVPresent", 1)
+                eccodes.codes_set_array(handle, "pv", np.asarray(coefficients, dtype=float))
+            count = eccodes.codes_get(handle, "numberOfDataPoints")
+            eccodes.codes_set(handle, "bitsPerValue", 24)
+            eccodes.codes_set_values(handle, np.broadcast_to(np.asarray(value, dtype=float), count).copy())
+            eccodes.codes_write(handle, file)
+            eccodes.codes_release(handle)

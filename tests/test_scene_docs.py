@@ -11,7 +11,7 @@ PAGE = Path(__file__).parents[1] / "docs" / "reading_model_files.md"
 def test_examples_run(tmp_path, monkeypatch, capsys):
     monkeypatch.chdir(tmp_path)
     examples = re.findall(r"```python\n(.*?)```", PAGE.read_text(encoding="utf-8"), flags=re.DOTALL)
-    assert len(examples) >= 8
+    assert len(examples) >= 10
     names = {}
     for example in examples:
         exec(compile(example, str(PAGE), "exec"), names)
@@ -21,5 +21,8 @@ def test_examples_run(tmp_path, monkeypatch, capsys):
         "over ice below freezing",
         "degC called K",
         "above the top level (514 hPa)",
+        "2025-03-01T18:00:00",
+        # sigma 0.1, p_top 10 hPa, p_s 1005 hPa: 1000 + 0.1 x 99500 Pa
+        "10950.",
     ):
         assert piece in printed

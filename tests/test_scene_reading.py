@@ -584,7 +584,9 @@ def test_impossible_positions(source, bad):
 
 def test_unknown_units_name_variable_and_unit(source):
     source["T"].attrs["units"] = "degrees of warmth"
-    with pytest.raises(SceneError, match="T: unknown units 'degrees of warmth'"):
+    with pytest.raises(
+        SceneError, match='T: unknown units \'degrees of warmth\'.*mapping=."temperature": ."name": "T", "units": "K"'
+    ):
         open_scene(source)
 
 
@@ -703,3 +705,17 @@ def test_a_scalar_height_belongs_to_its_own_field_only(tmp_path):
     scene = open_scene(tmp_path / "scalar.nc")
     assert any(line.startswith("surface_pressure <-") for line in scene.attrs["recognised"])
     assert any(line.startswith("air_temperature_2m <-") for line in scene.attrs["recognised"])
+
+
+def test_description_offers_a_mapping_to_fill_in(source, tmp_path):
+    source["SKIN"] = xr.full_like(source["PS"], 290.0).assign_attrs(units="K", standard_name="odd")
+    del source["SKIN"].attrs["standard_name"]
+    text = describe_scene(source)
+    assert 'skin_temperature = "NAME"   # perhaps SKIN' in text and "can be used" in text
+    lines = [line for line in text.splitlines() if line.startswith("  skin_temperature =")]
+    (tmp_path / "my.toml").write_text("[variables]\n" + lines[0].replace("NAME", "SKIN"))
+    np.testing.assert_allclose(open_scene(source, mapping=tmp_path / "my.toml")["skin_temperature"], 290.0)
+    source["T"].attrs = {"units": "K"}
+    source = source.rename(T="warmth")
+    text = describe_scene(source)
+    assert 'temperature = "NAME"   # perhaps warmth' in text and "no temperature on levels found" in text

@@ -7,6 +7,9 @@ import numpy as np
 from chansim.errors import SceneError
 from chansim.scene.variables import VARIABLES
 
+# condensate below this is no rounding error
+NEGATIVE_CONDENSATE = -1e-6  # kg kg-1
+_CONDENSATES = ("cloud_liquid", "cloud_ice", "rain", "snow", "graupel")
 # share of the valid maximum by which a quantity that cannot be negative may stray, and is clipped
 TOLERANCE = 1e-3
 RELATIVE_HUMIDITY_MIN, RELATIVE_HUMIDITY_MAX = -0.01, 1.5  # [1]
@@ -96,6 +99,8 @@ def checked(name, values, place, tally, counted=None):
     variable = VARIABLES[name]
     low, high = variable.valid_min, variable.valid_max
     slack = TOLERANCE * high if low == 0.0 else 0.0
+    if name in _CONDENSATES:
+        slack = -NEGATIVE_CONDENSATE
     slack_above = TOLERANCE if high == 1.0 else 0.0
     outside = (values < low - slack) | (values > high + slack_above)
     if counted is not None:
@@ -124,8 +129,24 @@ def _out_of_range(variable, values, outside, counted, place):
         f"{variable.name}{f' (from {source})' if source else ''}: {np.count_nonzero(outside)} of {values.size} values "
         f"outside the possible {variable.valid_min:g} to {variable.valid_max:g} {variable.units}; range seen "
         f"{seen_min:g} to {seen_max:g}, worst {values.flat[worst]:g} at {where}. "
-        f"Likely cause: {cause}. " + unit_fix(variable.name, source)
+        f"Likely cause: {cause}. " + _fix(variable.name, source, seen_min, seen_max)
     )
+
+
+def _fix(name, source, seen_min, seen_max):
+    """What to do about values out of range, in words."""
+    if name == "cloud_fraction" and seen_max > 1.0 and seen_min >= 0.0:
+        return (
+            f'If these are per cent, say mapping={{"{name}": {{"name": "{source}", "units": "%"}}}}; if not, limit '
+            "the field to 0..1 in the file"
+        )
+    if name in _CONDENSATES and seen_min < 0.0:
+        return (
+            "Less than nothing cannot be simulated; set negative values to zero in the file when they come from "
+            "interpolation or packing, or leave the field out with "
+            f'mapping={{"{name}": ""}}'
+        )
+    return unit_fix(name, source)
 
 
 def unit_fix(name, source):
@@ -145,6 +166,8 @@ def likely_cause(units, seen_min, seen_max, valid_min, valid_max):
             return words
     if any(np.isclose(value, fill) for fill in _FILL_VALUES for value in (seen_min, seen_max)):
         return "an undeclared fill value; set the _FillValue attribute"
+    if valid_min == 0.0 and seen_min < 0.0 and seen_max <= valid_max:
+        return "negative values of a quantity that has none, as interpolation and packing leave"
     return "wrong units, a damaged field or another variable"
 
 
@@ -219,4 +242,31 @@ def check_pressure(pressure, place):
         raise SceneError(
             f"pressure (from {source}): not monotonic, {np.count_nonzero(wrong)} steps between levels go the wrong "
             f"way, the first below {where}; sort the levels of the file and leave out repeated ones"
+        )
+
+
+def check_half_pressure(half, pressure, place):
+    """Half levels one more than levels, each between its neighbours.
+
+    Parameters
+    ----------
+    half, pressure : arrays (level + 1, ...) and (level, ...) [Pa]
+    place : Place
+
+    Raises
+    ------
+    SceneError : see above
+    """
+    if half.shape[0] != pressure.shape[0] + 1:
+        raise SceneError(
+            f"half_pressure: {half.shape[0]} half levels for {pressure.shape[0]} levels; there must be one more"
+        )
+    pressure = pressure.reshape(pressure.shape + (1,) * (half.ndim - pressure.ndim))
+    wrong = ~((half[:-1] <= pressure * (1.0 + 1e-9)) & (half[1:] >= pressure * (1.0 - 1e-9)))
+    wrong &= np.isfinite(pressure)
+    if np.any(wrong):
+        where = Place(place.latitude, place.longitude).describe(int(np.argmax(wrong)), wrong.shape, on_levels=True)
+        raise SceneError(
+            f"half_pressure: {np.count_nonzero(wrong)} levels do not lie between their half levels, the first at "
+            f"{where}; coefficients of levels and half levels do not belong together"
         )

@@ -11,7 +11,7 @@ import numpy as np
 from chansim.constants import MOLAR_MASS_DRY_AIR, STANDARD_GRAVITY
 from chansim.errors import SceneError
 from chansim.scene import humidity, hydrostatic
-from chansim.scene.checks import Place, Tally, check_pressure, check_relative_humidity, checked
+from chansim.scene.checks import Place, Tally, check_half_pressure, check_pressure, check_relative_humidity, checked
 from chansim.scene.land import land_fraction
 from chansim.scene.recognition import QUANTITIES
 from chansim.scene.reference_atmosphere import reference_at_pressure
@@ -68,9 +68,7 @@ def make_plan(recognised, *, relative_humidity_over="water", day_of_year=None):
     plan = Plan({}, relative_humidity_over, day_of_year)
     have = recognised.fields
     plan.sources = {name: f.name for name, f in have.items()}
-    plan.conversions = {
-        name: linear_conversion(recognised.units[name], QUANTITIES[name].units, f.name) for name, f in have.items()
-    }
+    plan.conversions = {name: _conversion(name, f, recognised.units[name]) for name, f in have.items()}
 
     def choose(canonical, *quantities):
         found = [q for q in quantities if q in have]
@@ -90,12 +88,22 @@ def make_plan(recognised, *, relative_humidity_over="water", day_of_year=None):
         choose(name, name)
     choose("surface_pressure", "surface_pressure", "log_surface_pressure")
     choose("skin_temperature", "skin_temperature", "sea_surface_temperature")
-    choose("specific_humidity_2m", "specific_humidity_2m", "dew_point_2m", "relative_humidity_2m")
+    choose(
+        "specific_humidity_2m", "specific_humidity_2m", "humidity_mixing_ratio_2m", "dew_point_2m",
+        "relative_humidity_2m",
+    )  # fmt: skip
     choose("orography", "orography", "surface_geopotential")
     if "wind_speed_10m" in have or {"eastward_wind_10m", "northward_wind_10m"} <= set(have):
         choose("wind_speed_10m", "wind_speed_10m", "eastward_wind_10m")
     plan.outputs = _outputs(plan)
     return plan
+
+
+def _conversion(name, f, units):
+    try:
+        return linear_conversion(units, QUANTITIES[name].units, f.name)
+    except SceneError as error:  # which quantity it is for makes the advice complete
+        raise SceneError(str(error).replace("QUANTITY", name)) from error
 
 
 def _outputs(plan):
@@ -106,7 +114,7 @@ def _outputs(plan):
     return {name: VARIABLES[name].kind for name in names}
 
 
-def canonical_columns(raw, pressure, latitude, longitude, plan, tally=None):
+def canonical_columns(raw, pressure, latitude, longitude, plan, tally=None, half_pressure=None):
     """Canonical arrays of one block of columns.
 
     Parameters
@@ -116,22 +124,26 @@ def canonical_columns(raw, pressure, latitude, longitude, plan, tally=None):
     latitude, longitude : arrays (...) [degrees]
     plan : Plan
     tally : Tally that receives the counts, or None
+    half_pressure : array with one level more, top to surface, checked against `pressure`, or None [Pa]
 
     Returns
     -------
-    dict of the arrays named in `plan.outputs`, in the precision of the temperature, and `column_valid`
-    (...) of bool
+    dict of `pressure`, the arrays named in `plan.outputs` in the precision of the temperature, and `column_valid` (...)
+    of bool
 
     Raises
     ------
     SceneError : impossible values; see `checks`
     """
     tally = Tally() if tally is None else tally
-    place = Place(latitude, longitude, pressure, plan.sources)
-    check_pressure(pressure, place)
-    levels = pressure.reshape((-1,) + (1,) * latitude.ndim) if pressure.ndim == 1 else pressure
     precision = _temperature_precision(raw)
     raw = {name: _converted(values, *plan.conversions[name]) for name, values in raw.items()}
+    pressure = _continued_under_ground(pressure, raw, plan, tally)
+    place = Place(latitude, longitude, pressure, plan.sources)
+    check_pressure(pressure, place)
+    if half_pressure is not None:
+        check_half_pressure(half_pressure, pressure, place)
+    levels = pressure.reshape((-1,) + (1,) * latitude.ndim) if pressure.ndim == 1 else pressure
     column = _Column(raw, levels, latitude, longitude, plan, place, tally)
     column.read_surface_pressure()
     column.read_temperature()
@@ -140,7 +152,24 @@ def canonical_columns(raw, pressure, latitude, longitude, plan, tally=None):
     column.read_surface()
     column.read_height()
     columns = {name: column.out[name].astype(precision, copy=False) for name in plan.outputs}
-    return {**columns, "column_valid": column.valid()}
+    return {"pressure": pressure, **columns, "column_valid": column.valid()}
+
+
+def _continued_under_ground(pressure, raw, plan, tally):
+    """Pressure with missing values at the bottom of columns put just under the surface pressure.
+
+    Isentropic levels that lie under the ground come without pressure; nothing there counts.
+    """
+    quantity = plan.routes.get("surface_pressure")
+    if pressure.ndim == 1 or quantity is None or not np.isnan(pressure[-1]).any():
+        return pressure
+    surface = raw[quantity] if quantity == "surface_pressure" else np.exp(raw[quantity].astype(float))
+    filled = pressure.copy()
+    for k in range(1, len(pressure)):
+        to_fill = np.isnan(pressure[k:]).all(axis=0) & np.isfinite(filled[k - 1])
+        filled[k] = np.where(to_fill, np.maximum(filled[k - 1], surface * 1.0001) * 1.0001, filled[k])
+    tally.add("pressure: missing under the ground, put there", np.count_nonzero(np.isnan(pressure) & ~np.isnan(filled)))
+    return filled
 
 
 def _temperature_precision(raw):
@@ -305,6 +334,8 @@ class _Column:
     def _humidity_2m(self):
         quantity, values = self.route("specific_humidity_2m")
         pressure = self.out["surface_pressure"]
+        if quantity == "humidity_mixing_ratio_2m":
+            return humidity.specific_humidity_from_mixing_ratio(values)
         if quantity == "dew_point_2m":
             return humidity.specific_humidity_from_dew_point(values, pressure)
         if quantity == "relative_humidity_2m":

@@ -23,13 +23,19 @@ _LEVEL_FAMILY = {
     "generalVertical": "generalVertical", "generalVerticalLayer": "generalVertical", "theta": "theta",
     "hybridHeight": "hybridHeight", "heightAboveSea": "heightAboveSea", "hybridPressure": "hybrid",
 }  # fmt: skip
+# what the values of a kind of level are, where cfgrib does not say
+_LEVEL_ATTRS = {
+    "theta": {"units": "K", "standard_name": "air_potential_temperature"},
+    "heightAboveSea": {"units": "m", "standard_name": "altitude"},
+}
 _ON_HYBRID_BUT_SURFACE = (129, 152)  # surface geopotential and ln p_s are coded on model level 1
 
 
 @dataclass(frozen=True)
 class Header:
-    """What one GRIB message says about itself, and where it lies in the file."""
+    """What one GRIB message says about itself, and where it lies in which file."""
 
+    path: str
     offset: object
     keys: dict
 
@@ -63,7 +69,7 @@ def scan(path):
 
     Parameters
     ----------
-    path : path of the file
+    path : path of one file
 
     Returns
     -------
@@ -79,7 +85,7 @@ def scan(path):
         for offset, message in stream.items():
             keys = {key: message.message_get(key, default=None) for key in _HEADER_KEYS}
             keys |= {key: message.message_get(key, default=None) for key in _NUMBER_KEYS}
-            headers.append(Header(offset, keys))
+            headers.append(Header(str(path), offset, keys))
     except Exception as error:  # ecCodes raises many kinds; EOFError when nothing was found
         raise SceneError(
             f"{path}: damaged GRIB file, message {len(headers) + 1} cannot be read ({error}); fetch the file again"
@@ -100,13 +106,13 @@ def valid_times(headers):
     return sorted({h.valid_time for h in headers})
 
 
-def fields_at(path, headers, time, select, chunks=None):
+def fields_at(name, headers, time, select, chunks=None):
     """The fields of one valid time.
 
     Parameters
     ----------
-    path : path of the file
-    headers : list of Header, from `scan`
+    name : what messages call the file, or the files
+    headers : list of Header, from `scan`; of one or more files
     time : numpy.datetime64, one of `valid_times`
     select : {"number": ensemble member} or {}
     chunks : None, or what `xarray.Dataset.chunk` takes
@@ -120,13 +126,13 @@ def fields_at(path, headers, time, select, chunks=None):
     SceneError : two runs or members are valid at that time
     """
     wanted = [h for h in headers if h.valid_time == time]
-    wanted = _one_of(path, wanted, "number", "ensemble members", select.get("number"))
-    _refuse_two_runs(path, wanted)
+    wanted = _one_of(name, wanted, "number", "ensemble members", select.get("number"))
+    _refuse_two_runs(name, wanted)
     groups = {}
     for header in wanted:
         groups.setdefault(_group_key(header), []).append(header)
-    stream = _stream(path)
-    return [_field(stream, key, members, chunks) for key, members in groups.items()]
+    streams = {path: _stream(path) for path in {h.path for h in wanted}}
+    return [_field(streams, key, members, chunks) for key, members in groups.items()]
 
 
 def _one_of(path, headers, key, what, wanted):
@@ -154,7 +160,7 @@ def _group_key(header):
     return keys["paramId"], keys["shortName"], family or kind, level, keys["stepType"]
 
 
-def _field(stream, key, headers, chunks):
+def _field(streams, key, headers, chunks):
     param_id, short_name, kind, level, step_type = key
     keys = headers[0].keys
     on_levels = level is None
@@ -168,13 +174,27 @@ def _field(stream, key, headers, chunks):
         evidence["standard_name"] = keys["cfName"]
     by_type = _by_level_type(headers)
     suffix = f":{level}" if level else ""
+    if kind == "hybrid" and on_levels and (pv := _coefficients(streams, headers[0])) is not None:
+        evidence["pv"] = pv
+    if kind == "theta":
+        evidence |= {"level_standard_name": "air_potential_temperature", "level_units": "K"}
     return Field(
         name=f"{short_name}@{kind}{suffix}",
-        open=lambda: _join_levels([_open(stream, members, chunks, on_levels) for members in by_type], kind),
+        open=lambda: _join_levels(
+            [_open(streams[members[0].path], members, chunks, on_levels) for members in by_type], kind
+        ),
         place="levels" if on_levels else _place(kind, level),
         level_dim=kind if on_levels else "",
         evidence=evidence,
     )
+
+
+def _coefficients(streams, header):
+    """Vertical coefficients in the header of a message; None when it has none."""
+    message = streams[header.path][header.offset]
+    if not message.message_get("PVPresent", default=0):
+        return None
+    return np.asarray(message.message_get("pv", default=[]), dtype=float)
 
 
 def _place(kind, level):
@@ -186,7 +206,7 @@ def _place(kind, level):
 def _by_level_type(headers):
     kinds = {}
     for header in headers:
-        kinds.setdefault(header.keys["typeOfLevel"], []).append(header)
+        kinds.setdefault((header.path, header.keys["typeOfLevel"]), []).append(header)
     return list(kinds.values())
 
 
@@ -203,12 +223,15 @@ def _open(stream, headers, chunks, on_levels):
     )
     (name,) = dataset.data_vars
     data = dataset[name].drop_vars([c for c in ("step", "time", "valid_time", "number") if c in dataset.coords])
+    data = _in_rows(data, stream, headers[0])
     if not on_levels:
         return data
     family = _LEVEL_FAMILY[kind]
     if kind not in data.dims:
         data = data.expand_dims(kind)
     data = data.rename({kind: family}) if kind != family else data
+    if family in _LEVEL_ATTRS:
+        data[family].attrs = dict(_LEVEL_ATTRS[family])
     if family == "isobaric":
         to_pascal = 100.0 if kind == "isobaricInhPa" else 1.0
         data = data.assign_coords(isobaric=data["isobaric"].values * to_pascal)
@@ -216,7 +239,29 @@ def _open(stream, headers, chunks, on_levels):
     return data
 
 
+# grids of rows that cfgrib gives as a list of values all the same
+_ROWS_AS_LIST = ("mercator", "transverse_mercator", "space_view", "equatorial_azimuthal_equidistant")
+
+
+def _in_rows(data, stream, header):
+    """A field in rows and columns where cfgrib leaves them in one list."""
+    if "values" not in data.dims or data.attrs.get("GRIB_gridType") not in _ROWS_AS_LIST:
+        return data
+    message = stream[header.offset]
+    rows = tuple(int(message.message_get(key, default=0) or 0) for key in ("Ny", "Nx"))
+    if rows[0] * rows[1] != data.sizes["values"]:
+        return data
+
+    def fold(array):
+        folded = (array.data if array.chunks else array.values).reshape(*array.shape[:-1], *rows)
+        return (*array.dims[:-1], "y", "x"), folded, array.attrs
+
+    data = data.transpose(..., "values")
+    kept = {n: c if "values" not in c.dims else fold(c.variable) for n, c in data.coords.items()}
+    return xr.DataArray(fold(data)[1], dims=fold(data)[0], coords=kept, name=data.name, attrs=data.attrs)
+
+
 def _join_levels(pieces, dim):
-    if len(pieces) == 1:
+    if len(pieces) == 1 or dim not in pieces[0].dims:
         return pieces[0]
     return xr.concat(pieces, dim=dim, coords="minimal", compat="override").sortby(dim)

@@ -7,7 +7,7 @@ import pyproj
 import xarray as xr
 
 from chansim.errors import SceneError
-from chansim.scene.sources import is_latitude, is_longitude
+from chansim.scene.dataset_fields import is_latitude, is_longitude
 from chansim.scene.units import convert
 
 _REGULARITY = 0.02  # largest departure from a regular projected grid, in grid lengths
@@ -38,13 +38,14 @@ class Grid:
     log: list = field(default_factory=list)
 
 
-def find_grid(data, dataset=None):
+def find_grid(data, dataset=None, positions=None):
     """The horizontal grid of a field.
 
     Parameters
     ----------
     data : DataArray of one field, as in the source
     dataset : the Dataset it comes from (for its grid mapping), None for GRIB
+    positions : {"latitude": DataArray, "longitude": DataArray} for GRIB lists of cells, whose positions are fields
 
     Returns
     -------
@@ -60,6 +61,8 @@ def find_grid(data, dataset=None):
         coords = {n: dataset[n] if n in dataset.variables else c for n, c in coords.items()}
     latitude = _pick(coords, is_latitude)
     longitude = _pick(coords, is_longitude)
+    if latitude is None and longitude is None and positions:
+        latitude, longitude = positions["latitude"], positions["longitude"]
     crs, crs_log = _source_crs(data, dataset)
     if latitude is None or longitude is None:
         grid = _from_projection(data, coords, crs)
@@ -99,13 +102,18 @@ def _from_points(data, latitude, longitude, coords, crs):
     if latitude.ndim == 0:
         lat, lon = (xr.DataArray(np.atleast_1d(_degrees(c)), dims="cell") for c in (latitude, longitude))
         return Grid(("cell",), {}, lat, lon)
+    if latitude.ndim == 1 and latitude.sizes[latitude.dims[0]] not in data.shape:
+        raise SceneError(
+            f"latitude has {latitude.size} values ({latitude.dims[0]}), but {data.name} has {dict(data.sizes)}; the "
+            "positions must be those of its columns, so both must be cut alike"
+        )
     if set(latitude.dims) != set(longitude.dims) or not set(latitude.dims) <= set(data.dims):
         raise SceneError(
             f"latitude has dimensions {latitude.dims} and longitude {longitude.dims}; both must share the "
             f"horizontal dimensions of {data.name} {data.dims}"
         )
     order = tuple(d for d in data.dims if d in latitude.dims)
-    renamed = {d: short for d, short in (("latitude", "y"), ("longitude", "x")) if d in order}
+    renamed = {d: short for d, short in (("latitude", "y"), ("longitude", "x"), ("values", "cell")) if d in order}
     dims = tuple(renamed.get(d, d) for d in order)
     lat, lon = (xr.DataArray(_degrees(c.transpose(*order)), dims=dims) for c in (latitude, longitude))
     grid = Grid(dims, renamed, lat, lon)
@@ -201,7 +209,40 @@ def _source_crs(data, dataset):
         return _crs_from_cf(name, dataset[name].attrs)
     if "GRIB_gridType" in data.attrs:
         return _crs_from_grib(data.attrs)
+    if dataset is not None and "MAP_PROJ" in dataset.attrs:
+        return _crs_from_global_attributes(dataset.attrs)
     return None, []
+
+
+_NATIVE_RADIUS = 6370000.0  # m, of the sphere that models with these attributes use
+
+
+def _crs_from_global_attributes(attrs):
+    """CRS from the global attributes in which mesoscale models write their projection (MAP_PROJ, TRUELAT1, ...).
+
+    Whether the positions lie on it is checked later, so a wrong guess does no harm.
+    """
+
+    def number(name, default=0.0):
+        return float(np.atleast_1d(attrs.get(name, default))[0])
+
+    names = {1: "lambert_conformal_conic", 2: "polar_stereographic", 3: "mercator"}
+    kind = names.get(int(number("MAP_PROJ", -1)))
+    if kind is None or "TRUELAT1" not in attrs:
+        return None, []
+    parallels = [number("TRUELAT1")]
+    cf = {"grid_mapping_name": kind, "earth_radius": _NATIVE_RADIUS}
+    if kind == "lambert_conformal_conic":
+        parallels.append(number("TRUELAT2", parallels[0]))
+        parallels = parallels[:1] if parallels[0] == parallels[1] else parallels
+        origin = number("MOAD_CEN_LAT", number("CEN_LAT", parallels[0]))
+        cf |= {"longitude_of_central_meridian": number("STAND_LON"), "latitude_of_projection_origin": origin}
+    elif kind == "polar_stereographic":
+        pole = 90.0 if parallels[0] > 0 else -90.0
+        cf |= {"straight_vertical_longitude_from_pole": number("STAND_LON"), "latitude_of_projection_origin": pole}
+    else:
+        cf |= {"longitude_of_projection_origin": number("STAND_LON", number("CEN_LON"))}
+    return _crs_from_cf("MAP_PROJ", cf | {"standard_parallel": parallels if len(parallels) > 1 else parallels[0]})
 
 
 def _crs_from_cf(name, attrs):
@@ -238,7 +279,9 @@ def _crs_from_grib(attrs):
 
 
 def _degrees(coord):
-    return np.array(coord.values, dtype=float)  # a copy: positions are wrapped and clipped in place
+    values = np.array(coord.values, dtype=float)  # a copy: positions are wrapped and clipped in place
+    radians = str(coord.attrs.get("units", "")).lower() in ("radian", "radians", "rad")
+    return np.degrees(values) if radians else values
 
 
 def _check_positions(grid):

@@ -114,6 +114,137 @@ def temperature_from_potential(potential_temperature, pressure):
     return potential_temperature * (pressure / 1e5) ** _KAPPA
 
 
+def pressure_from_heights(height, temperature_v, known_pressure, known_height, ground=-np.inf):
+    """Pressure on levels of known height, in hydrostatic balance with a pressure known at one height.
+
+    T_v is linear in height between levels, in which the integral is exact; below the lowest level it grows at the
+    standard lapse rate, above the top one it is constant. Levels under the ground, or without temperature below the
+    first one that has it, get the standard lapse rate too.
+
+    Parameters
+    ----------
+    height : array (level, ...), geopotential [m]
+    temperature_v : array (level, ...), virtual temperature [K]
+    known_pressure, known_height : arrays (...), e.g. of the ground [Pa, m]
+    ground : array (...), geopotential [m]
+
+    Returns
+    -------
+    array (level, ...) [Pa]
+
+    Source: hypsometric equation, e.g. Wallace and Hobbs 2006, eq. 3.24, d ln p = -g / (R T_v) dz.
+    """
+    temperature_v = _continued_downward(height, temperature_v, ground, STANDARD_LAPSE_RATE)
+    depth = _inverse_integral(height, temperature_v, known_height, STANDARD_LAPSE_RATE)
+    return known_pressure * np.exp(depth / SCALE)
+
+
+def pressure_from_heights_and_potential(height, potential_temperature_v, known_pressure, known_height, ground=-np.inf):
+    """The same where the virtual potential temperature is known; it is linear in height, constant beyond the levels.
+
+    Parameters
+    ----------
+    height : array (level, ...), geopotential [m]
+    potential_temperature_v : array (level, ...), virtual potential temperature [K]
+    known_pressure, known_height, ground : see there [Pa, m, m]
+
+    Returns
+    -------
+    array (level, ...) [Pa]
+
+    Source: hydrostatic equation in the Exner function, d Pi = -g / (c_p theta_v) dz, e.g. Holton and Hakim 2013.
+    """
+    potential_temperature_v = _continued_downward(height, potential_temperature_v, ground, 0.0)
+    depth = _inverse_integral(height, potential_temperature_v, known_height, 0.0)
+    exner = (known_pressure / 1e5) ** _KAPPA + depth * _KAPPA / SCALE  # g / c_p = kappa g / R
+    return 1e5 * np.maximum(exner, 1e-3) ** (1.0 / _KAPPA)
+
+
+def pressure_from_density(density, temperature_v):
+    """Pressure by the ideal gas law, p = rho R T_v.
+
+    Parameters
+    ----------
+    density : array, of moist air [kg m-3]
+    temperature_v : array, virtual temperature [K]
+
+    Returns
+    -------
+    array [Pa]
+
+    Source: e.g. Wallace and Hobbs 2006, eq. 3.15.
+    """
+    return density * GAS_CONSTANT_DRY_AIR * temperature_v
+
+
+def pressure_from_density_and_potential(density, potential_temperature_v):
+    """The same from the virtual potential temperature, p = p_0 (rho R theta_v / p_0)**(1 / (1 - kappa)).
+
+    Parameters
+    ----------
+    density : array, of moist air [kg m-3]
+    potential_temperature_v : array [K]
+
+    Returns
+    -------
+    array [Pa]
+
+    Source: ideal gas law with Poisson's equation, e.g. Wallace and Hobbs 2006, eq. 3.15 and 3.54.
+    """
+    return 1e5 * (density * GAS_CONSTANT_DRY_AIR * potential_temperature_v / 1e5) ** (1.0 / (1.0 - _KAPPA))
+
+
+def pressure_from_exner(exner):
+    """Pressure from the Exner function, p = p_0 Pi**(c_p / R).
+
+    Parameters
+    ----------
+    exner : array [1]
+
+    Returns
+    -------
+    array [Pa]
+
+    Source: Poisson's equation, e.g. Wallace and Hobbs 2006, eq. 3.54.
+    """
+    return 1e5 * exner ** (1.0 / _KAPPA)
+
+
+def _continued_downward(height, values, ground, lapse_rate):
+    """Values with those under the ground, or missing at the bottom, continued from above at a lapse rate."""
+    values = np.array(values, dtype=float)
+    for k in range(1, len(values)):
+        under = (height[k] < ground) | np.isnan(values[k])
+        continued = values[k - 1] + lapse_rate * (height[k - 1] - height[k])
+        values[k] = np.where(under, continued, values[k])
+    return values
+
+
+def _inverse_integral(height, values, known_height, lapse_rate):
+    """Integral of dz / values from each level up to a known height; negative above it (level, ...)."""
+    layers = [_layer_integral(height[k], height[k + 1], values[k], values[k + 1]) for k in range(len(height) - 1)]
+    from_top = np.concatenate([np.zeros((1, *values.shape[1:])), np.cumsum(layers, axis=0)]) if layers else 0.0 * values
+    # above the top level: constant; below the lowest: at the lapse rate
+    known = -(known_height - height[0]) / values[0]
+    for k in range(len(height) - 1):
+        share = (height[k] - known_height) / np.where(height[k] == height[k + 1], 1.0, height[k] - height[k + 1])
+        there = values[k] + share * (values[k + 1] - values[k])
+        inside = from_top[k] + _layer_integral(height[k], known_height, values[k], np.maximum(there, 1.0))
+        known = np.where((known_height <= height[k]) & (known_height >= height[k + 1]), inside, known)
+    there = values[-1] + lapse_rate * (height[-1] - known_height)
+    beneath = from_top[-1] + _layer_integral(height[-1], known_height, values[-1], np.maximum(there, 1.0))
+    return from_top - np.where(known_height < height[-1], beneath, known)
+
+
+def _layer_integral(upper_height, lower_height, upper, lower):
+    """Integral of dz / T over a layer in which T is linear: thickness over the logarithmic mean."""
+    contrast = lower - upper
+    small = np.abs(contrast) < 1e-6 * upper
+    with np.errstate(divide="ignore", invalid="ignore"):
+        mean = np.where(small, 0.5 * (upper + lower), contrast / np.log(lower / upper))
+    return (upper_height - lower_height) / mean
+
+
 def heights_from_surface(pressure, temperature, specific_humidity, surface_pressure, surface_height):
     """Geopotential heights of the levels, integrated upward from the surface.
 

@@ -6,6 +6,7 @@ The file's name plays no part. A mapping given by the user goes before all of th
 """
 
 import functools
+import re
 from collections.abc import Callable
 from dataclasses import dataclass, field
 
@@ -13,6 +14,8 @@ from chansim.errors import SceneError
 from chansim.scene.units import is_convertible
 from chansim.scene.variables import VARIABLES
 
+# long names of fields that are only a part of what they name
+PART_OF_A_SUM = re.compile(r"\bperturbation\b|\bbase[\s-]?state\b|\breference state\b|\bpert\.?(?=\s)|\bdeviation\b")
 MAPPING_HINT = 'mapping={{"{quantity}": "{name}"}}'
 
 
@@ -24,7 +27,9 @@ class Field:
     open : function that gives the DataArray with the coordinates of the source
     place : "levels", "surface", "2m", "10m", "single" (one level, unsaid which) or another kind of level
     level_dim : dimension of the levels, "" when place is not "levels"
-    evidence : standard_name, short_name, param_id, long_name, units as far as given
+    evidence : standard_name, short_name, param_id, long_name, units as far as given; "is_part" when it is only a part
+        of a sum that the user asks for
+    parts : fields that it is the sum of, () when it is not
     """
 
     name: str
@@ -32,6 +37,7 @@ class Field:
     place: str
     level_dim: str = ""
     evidence: dict = field(default_factory=dict)
+    parts: tuple = ()
 
     @functools.cached_property
     def data(self):
@@ -85,20 +91,31 @@ _LEVELS = (
     Quantity("humidity_mixing_ratio", "levels", "kg kg-1", ("humidity_mixing_ratio",), ("mixr",), (),
              ("water vapor mixing ratio", "water vapour mixing ratio", "humidity mixing ratio"),
              "specific_humidity"),
-    Quantity("height", "levels", "m", ("height_above_mean_sea_level", "altitude"), ("alt",), (),
+    Quantity("half_pressure", "levels", "Pa", (), (), (), ("air pressure at half levels", "half level pressure")),
+    Quantity("exner_function", "levels", "1", ("dimensionless_exner_function",), ("exner",), (), ("exner function",),
+             "pressure"),
+    Quantity("air_density", "levels", "kg m-3", ("air_density",), ("den", "rho", "rho_d"), (3089,),
+             ("air density", "dry air density"),
+             "pressure"),
+    Quantity("height", "levels", "m", ("height_above_mean_sea_level", "altitude"), ("alt", "hhl"), (),
              ("height above mean sea level", "altitude above mean sea level")),
+    Quantity("height_above_ground", "levels", "m", ("height",), ("h",), (3008,), ("height above ground",), "height"),
     Quantity("geopotential_height", "levels", "m", ("geopotential_height",), ("gh", "zg"), (156,),
              ("geopotential height",), "height"),
     Quantity("geopotential", "levels", "m2 s-2", ("geopotential",), ("z",), (129,), ("geopotential",), "height"),
     Quantity("cloud_fraction", "levels", "1", ("cloud_area_fraction_in_atmosphere_layer", "cloud_area_fraction"),
-             ("cc", "cl", "tcc"), (248, 228164), ("fraction of cloud cover", "cloud fraction")),
+             ("cc", "cl", "tcc", "cldfra"), (248, 228164), ("fraction of cloud cover", "cloud fraction")),
     Quantity("effective_radius_liquid", "levels", "m",
-             ("effective_radius_of_cloud_liquid_water_particles", "effective_radius_of_cloud_liquid_water_particle")),
+             ("effective_radius_of_cloud_liquid_water_particles", "effective_radius_of_cloud_liquid_water_particle"),
+             (), (), ("effective radius cloud water", "effective radius of cloud water")),
     Quantity("effective_radius_ice", "levels", "m",
-             ("effective_radius_of_cloud_ice_particles", "effective_radius_of_cloud_ice_particle")),
+             ("effective_radius_of_cloud_ice_particles", "effective_radius_of_cloud_ice_particle"),
+             (), (), ("effective radius cloud ice", "effective radius of cloud ice")),
     Quantity("number_liquid", "levels", "kg-1",
-             ("number_concentration_of_cloud_liquid_water_particles_in_air_per_mass",)),
-    Quantity("number_ice", "levels", "kg-1", ("number_concentration_of_ice_crystals_in_air_per_mass",)),
+             ("number_concentration_of_cloud_liquid_water_particles_in_air_per_mass",), (), (),
+             ("cloud water number concentration", "cloud droplet number concentration")),
+    Quantity("number_ice", "levels", "kg-1", ("number_concentration_of_ice_crystals_in_air_per_mass",),
+             (), (), ("ice number concentration", "cloud ice number concentration")),
 )  # fmt: skip
 
 
@@ -112,7 +129,7 @@ def _gas(name, cf_name, short_names, param_ids):
     )  # fmt: skip
 
 
-def _condensate(name, cf_names, specific, ratio):
+def _condensate(name, cf_names, specific, ratio, ratio_long=()):
     """Condensate per mass of moist air, and per mass of dry air under `<name>_mixing_ratio`."""
     specific_short, specific_ids = specific
     ratio_short, ratio_ids = ratio
@@ -120,7 +137,7 @@ def _condensate(name, cf_names, specific, ratio):
     return (
         Quantity(name, "levels", "kg kg-1", standard, specific_short, specific_ids),
         Quantity(f"{name}_mixing_ratio", "levels", "kg kg-1", tuple(f"{cf}_mixing_ratio" for cf in cf_names),
-                 ratio_short, ratio_ids, (), name),
+                 ratio_short, ratio_ids, ratio_long, name),
     )  # fmt: skip
 
 
@@ -132,31 +149,38 @@ _GASES = (
     *_gas("carbon_monoxide", "carbon_monoxide", ("co",), (210123,)),
 )
 _CONDENSATES = (
-    *_condensate("cloud_liquid", ("cloud_liquid_water",), (("clwc", "clw"), (246,)), (("clwmr", "qc"), (260018,))),
+    *_condensate("cloud_liquid", ("cloud_liquid_water",), (("clwc", "clw"), (246,)), (("clwmr", "qc"), (260018,)),
+                 ("cloud water mixing ratio", "cloud liquid water mixing ratio")),
     *_condensate("cloud_ice", ("cloud_ice",), (("ciwc", "cli"), (247,)),
-                 (("icmr", "ciwmr", "qi"), (260019,))),
-    *_condensate("rain", ("rain", "rain_water"), (("crwc",), (75,)), (("rwmr", "qr"), (260020,))),
-    *_condensate("snow", ("snow", "snow_water"), (("cswc",), (76,)), (("snmr", "qs"), (260021,))),
-    *_condensate("graupel", ("graupel", "graupel_and_hail"), ((), ()), (("grle", "grmr", "qg"), (260028,))),
+                 (("icmr", "ciwmr", "qi"), (260019,)), ("ice mixing ratio", "cloud ice mixing ratio")),
+    *_condensate("rain", ("rain", "rain_water"), (("crwc",), (75,)), (("rwmr", "qr"), (260020,)),
+                 ("rain water mixing ratio", "rain mixing ratio")),
+    *_condensate("snow", ("snow", "snow_water"), (("cswc",), (76,)), (("snmr", "qs"), (260021,)),
+                 ("snow mixing ratio", "snow water mixing ratio")),
+    *_condensate("graupel", ("graupel", "graupel_and_hail"), ((), ()), (("grle", "grmr", "qg"), (260028,)),
+                 ("graupel mixing ratio",)),
 )  # fmt: skip
 _SURFACE = (
     Quantity("surface_pressure", "surface", "Pa", ("surface_air_pressure",), ("sp", "ps", "psfc"), (134,),
-             ("surface pressure",)),
+             ("surface pressure", "sfc pressure")),
     Quantity("log_surface_pressure", "surface", "1", (), ("lnsp",), (152,),
              ("logarithm of surface pressure",), "surface_pressure"),
     Quantity("skin_temperature", "surface", "K", ("surface_temperature",), ("skt", "ts"), (235, 130),
              ("skin temperature", "surface skin temperature")),
     Quantity("sea_surface_temperature", "surface", "K", ("sea_surface_temperature", "sea_surface_skin_temperature"),
              ("sst", "tos"), (34, 151159), ("sea surface temperature",), "skin_temperature"),
-    Quantity("orography", "surface", "m", ("surface_altitude",), ("orog",), (228002,), ("orography", "terrain height")),
+    Quantity("orography", "surface", "m", ("surface_altitude",), ("orog", "hsurf"), (228002,),
+             ("orography", "terrain height")),
     Quantity("surface_geopotential", "surface", "m2 s-2", ("geopotential", "surface_geopotential"), ("z",), (129,),
              ("surface geopotential",), "orography"),
     Quantity("land_fraction", "surface", "1", ("land_area_fraction", "land_binary_mask"), ("lsm", "sftlf", "land"),
-             (172,), ("land-sea mask", "land fraction", "land mask")),
+             (172,), ("land-sea mask", "land fraction", "land mask", "land mask (1 for land, 0 for water)")),
     Quantity("surface_class", "surface", "1"),
-    Quantity("air_temperature_2m", "2m", "K", ("air_temperature",), ("2t", "t2m", "tas"), (167,),
-             ("2 metre temperature",)),
+    Quantity("air_temperature_2m", "2m", "K", ("air_temperature",), ("2t", "t2m", "tas", "t2"), (167,),
+             ("2 metre temperature", "temp at 2 m")),
     Quantity("specific_humidity_2m", "2m", "kg kg-1", ("specific_humidity",), ("2sh", "sh2", "huss"), (174096,)),
+    Quantity("humidity_mixing_ratio_2m", "2m", "kg kg-1", ("humidity_mixing_ratio",), ("q2",), (), ("qv at 2 m",),
+             "specific_humidity_2m"),
     Quantity("relative_humidity_2m", "2m", "1", ("relative_humidity",), ("2r", "r2", "hurs"), (260242,), (),
              "specific_humidity_2m"),
     Quantity("dew_point_2m", "2m", "K", ("dew_point_temperature",), ("2d", "d2m"), (168,), (),
@@ -219,6 +243,7 @@ def recognise(fields, mapping=None):
             continue
         tier = min(candidates)
         best = _prefer_instantaneous(_with_fitting_units(quantity, tier, candidates[tier], result.log))
+        best = _prefer_levels_of_temperature(quantity, best, result)
         if len(best) > 1:
             raise SceneError(_ambiguous(quantity, best))
         if best:
@@ -267,6 +292,8 @@ def _evidence_tier(quantity, f):
         return None
     if f.name == quantity.name:
         return 0
+    if evidence.get("is_part") or PART_OF_A_SUM.search(str(evidence.get("long_name", "")).lower()):
+        return None
     standard_name = evidence.get("standard_name")
     if standard_name and standard_name in (*quantity.standard_names, _canonical_standard_name(quantity)):
         return 1
@@ -285,7 +312,9 @@ def _evidence_tier(quantity, f):
 
 def _canonical_standard_name(quantity):
     variable = VARIABLES.get(quantity.name)
-    return variable.standard_name if variable and variable.standard_name else None
+    if variable is None or variable.kind == "half_level":  # shares the standard name of the full levels
+        return None
+    return variable.standard_name or None
 
 
 def _place_fits(quantity, f, short):
@@ -296,13 +325,24 @@ def _place_fits(quantity, f, short):
     if quantity.place == "surface":
         return True
     # one unnamed level: near the surface only when its name says so
-    return quantity.place in _NEAR_SURFACE and (short in quantity.short_names or f.name == quantity.name)
+    long_name = str(f.evidence.get("long_name", "")).strip().lower()
+    named = short in quantity.short_names or f.name == quantity.name or long_name in quantity.long_names
+    return quantity.place in _NEAR_SURFACE and named
 
 
 def _prefer_instantaneous(fields):
     """Drops means, sums and extremes over time when an instantaneous field is there too."""
     instantaneous = [f for f in fields if f.evidence.get("over_time", "instant") == "instant"]
     return instantaneous or fields
+
+
+def _prefer_levels_of_temperature(quantity, fields, result):
+    """Of fields on several kinds of levels, those on the levels of the temperature when there are any."""
+    temperature = result.fields.get("temperature") or result.fields.get("potential_temperature")
+    if temperature is None or quantity.place != "levels" or quantity.serves == "temperature":
+        return fields
+    same = [f for f in fields if f.level_dim == temperature.level_dim]
+    return same or fields
 
 
 def _ambiguous(quantity, fields):

@@ -4,11 +4,18 @@ The reader asks `level_pressure` for pressure on the levels of the temperature; 
 other fields onto these. `level` runs from the top of the atmosphere to the surface.
 """
 
+from dataclasses import dataclass
+
 import numpy as np
 import xarray as xr
 
 from chansim.errors import SceneError
+from chansim.scene import coordinates, hydrostatic
 from chansim.scene.columns import CONDENSATES, HUMIDITY_ROUTES
+from chansim.scene.formula_terms import GIVES_HEIGHT, KINDS, find_parametric
+from chansim.scene.from_heights import hydrostatic_pressure, pressure_by_density
+from chansim.scene.native import on_full_levels
+from chansim.scene.recognition import Field
 from chansim.scene.units import convert, is_convertible
 
 # what is zero where the file stops, because models write it only where it can exist
@@ -16,41 +23,176 @@ _ZERO_BEYOND = ("cloud_fraction", *CONDENSATES, *(f"{name}_mixing_ratio" for nam
 _SAME_PRESSURE = 1e-4  # relative difference below which two pressures are the same level
 
 
-def level_pressure(temperature, recognised, log):
+@dataclass
+class LevelPressure:
+    """Pressure of the levels of a scene.
+
+    full : DataArray on the levels [Pa]
+    half : DataArray on the half levels (dimension `half_level`), None where they are not exactly known [Pa]
+    """
+
+    full: xr.DataArray
+    half: xr.DataArray | None = None
+
+
+def level_pressure(temperature, recognised, opened, vertical=None):
     """Pressure of the levels of a field.
 
     Parameters
     ----------
     temperature : Field that defines the levels
-    recognised : Recognised
-    log : list that receives a line
+    recognised : Recognised; receives lines of log, and the surface pressure or the heights that formulas give
+    opened : Source
+    vertical : table [vertical] of a mapping, or None
 
     Returns
     -------
-    DataArray with the dimension of the levels, and more when a pressure field is given [Pa]
+    LevelPressure, with the dimension of the levels, and more unless it is the same for all columns [Pa]
 
     Raises
     ------
-    SceneError : the levels carry no pressure
+    SceneError : the levels carry no pressure, or terms to make it are missing
     """
-    dim = temperature.level_dim
+    dim, log = temperature.level_dim, recognised.log
     coord = temperature.data.coords.get(dim)
-    given = recognised.fields.get("pressure")
-    if "pressure" not in recognised.mapped and coord is not None and _is_pressure(coord):
+    asked = bool(vertical and "coordinate" in vertical)
+    if "pressure" not in recognised.mapped and not asked and coord is not None and _is_pressure(coord):
         log.append(f"pressure <- coordinate {dim} [{coord.attrs['units']}]")
-        return convert(coord.astype(float), coord.attrs["units"], "Pa", str(dim))
-    if given is not None and given.level_dim == dim:
-        return convert(given.data.astype(float), recognised.units["pressure"], "Pa", given.name)
-    kind = (
-        coord.attrs.get("standard_name") or coord.attrs.get("long_name") or "no standard name"
-        if coord is not None
-        else "no values"
+        return LevelPressure(convert(coord.astype(float), coord.attrs["units"], "Pa", str(dim)))
+    if not asked:
+        given = _given_pressure(temperature, recognised, opened)
+        if given is not None:
+            return given
+    parametric = find_parametric(temperature, recognised, opened, vertical)
+    if parametric is not None and parametric.kind not in GIVES_HEIGHT:
+        return _parametric_pressure(parametric, temperature, recognised, opened)
+    if parametric is not None:
+        _add_height(parametric, temperature, recognised)
+    found = None if asked else pressure_by_density(temperature, recognised)
+    if found is None:
+        found = hydrostatic_pressure(temperature, recognised, opened, vertical)
+    if found is None:
+        raise SceneError(_no_pressure(temperature, coord, recognised))
+    return LevelPressure(found)
+
+
+def _given_pressure(temperature, recognised, opened):
+    """Pressure, or the Exner function, as a field on the levels or between them; None when there is none."""
+    for quantity, units in (("pressure", "Pa"), ("exner_function", "1")):
+        given = recognised.fields.get(quantity)
+        if given is None:
+            continue
+        values = convert(given.data.astype(float), recognised.units[quantity], units, given.name)
+        values = values if quantity == "pressure" else hydrostatic.pressure_from_exner(values)
+        count = temperature.data.sizes[temperature.level_dim]
+        if given.level_dim == temperature.level_dim and values.sizes[given.level_dim] == count:
+            return LevelPressure(values, _given_half_pressure(temperature, recognised, opened))
+        full = on_full_levels(given, values, temperature.level_dim, count, "pressure")
+        if full is not None:
+            recognised.log.append(f"pressure: {given.name} lies between the levels; their means are taken on them")
+            return LevelPressure(full, _without_coords(values).rename({given.level_dim: "half_level"}))
+    return None
+
+
+def _given_half_pressure(temperature, recognised, opened):
+    """Pressure between the levels as the file gives it beside that on them; None when it does not."""
+    wanted = {**temperature.data.sizes, temperature.level_dim: temperature.data.sizes[temperature.level_dim] + 1}
+    candidates = [f for f in opened.fields if f.evidence.get("standard_name") == "air_pressure"]
+    if (half := recognised.fields.get("half_pressure")) is not None:
+        candidates.insert(0, half)
+    for f in candidates:
+        if f.place != "levels" or sorted(f.data.sizes.values()) != sorted(wanted.values()):
+            continue
+        if f.data.sizes[f.level_dim] != wanted[temperature.level_dim]:
+            continue
+        recognised.log.append(f"half_pressure <- {f.name} [{f.units}]")
+        values = _without_coords(convert(f.data.astype(float), f.units, "Pa", f.name))
+        return values.rename({f.level_dim: "half_level"}) if f.level_dim != "half_level" else values
+    return None
+
+
+def _without_coords(data):
+    return data.drop_vars(list(data.coords))
+
+
+def _parametric_pressure(parametric, temperature, recognised, opened):
+    terms = {name: _like(value, temperature) for name, value in parametric.terms.items()}
+    if parametric.kind == "hybrid_sigma_pressure":
+        full = coordinates.pressure_from_hybrid_sigma(terms["ap"], terms["b"], terms["ps"])
+    elif parametric.kind == "sigma":
+        full = coordinates.pressure_from_sigma(terms["sigma"], terms["ps"], terms["ptop"])
+    else:
+        full = coordinates.pressure_from_log_pressure(terms["lev"], terms["p0"])
+    recognised.log += parametric.log
+    if "ps" in terms and not {"surface_pressure", "log_surface_pressure"} & set(recognised.fields):
+        name = parametric.surface_name or "ps"
+        recognised.fields["surface_pressure"] = Field(name, lambda: terms["ps"], "surface", evidence={"units": "Pa"})
+        recognised.units["surface_pressure"] = "Pa"
+        recognised.log.append(f"surface_pressure <- {name}, by the formula terms of the levels")
+    half = None
+    if parametric.half:
+        ap, b = (xr.DataArray(parametric.half[term], dims="half_level") for term in ("ap", "b"))
+        half = coordinates.pressure_from_hybrid_sigma(ap, b, terms["ps"])
+    return LevelPressure(full, half)
+
+
+def _like(value, temperature):
+    """A term in chunks like those of the temperature, so that what is made of it stays lazy."""
+    if not isinstance(value, xr.DataArray) or not temperature.data.chunks:
+        return value
+    sizes = temperature.data.chunksizes
+    return value.chunk({d: sizes[d] for d in value.dims if d in sizes})
+
+
+def _add_height(parametric, temperature, recognised):
+    """Heights above sea level that a formula gives, as a field of the file."""
+    terms = {name: _like(value, temperature) for name, value in parametric.terms.items()}
+    if parametric.kind == "hybrid_height":
+        height = coordinates.height_from_hybrid_height(terms["a"], terms["b"], terms["orog"])
+    else:
+        height = coordinates.height_from_sleve(*(terms[name] for name in KINDS["sleve"]))
+    recognised.log += [line.replace("pressure <-", "height <-") for line in parametric.log]
+    recognised.fields["height"] = Field(
+        f"{parametric.kind} levels", lambda: height, "levels", temperature.level_dim, {"units": "m"}
     )
-    raise SceneError(
-        f"{temperature.name}: its levels '{dim}' ({kind}) give no pressure. Add a field with standard_name "
-        "'air_pressure' on the same levels, give the coordinate pressure units, or say "
-        'mapping={"pressure": "its name"}'
+    recognised.units["height"] = "m"
+    if not {"orography", "surface_geopotential"} & set(recognised.fields) and "orog" in terms:
+        name = parametric.surface_name or "orog"
+        recognised.fields["orography"] = Field(name, lambda: terms["orog"], "surface", evidence={"units": "m"})
+        recognised.units["orography"] = "m"
+        recognised.log.append(f"orography <- {name}, by the formula terms of the levels")
+
+
+def _no_pressure(temperature, coord, recognised):
+    """What the levels say of themselves, and every way to give them a pressure."""
+    kind = "no values"
+    if coord is not None:
+        kind = coord.attrs.get("standard_name") or coord.attrs.get("long_name") or "no standard name"
+    other = recognised.fields.get("pressure")
+    beside = f" ({other.name} lies on other levels, '{other.level_dim}')" if other else ""
+    return (
+        f"{temperature.name}: its levels '{temperature.level_dim}' ({kind}) give no pressure{beside}. Add a field with "
+        "standard_name 'air_pressure' on the same levels, or heights of the levels (standard_name altitude or "
+        "geopotential_height) with surface pressure and orography, or give the coordinate pressure units, or say in a "
+        f"mapping file one of:{_EXAMPLES}"
     )
+
+
+_EXAMPLES = """
+  [variables]
+  pressure = "NAME"                     # or {sum = ["BASE", "PERTURBATION"]}
+or
+  [vertical]
+  coordinate = "hybrid_sigma_pressure"
+  ap = "NAME"
+  b = "NAME"
+  ps = "NAME"
+or
+  [vertical]
+  coordinate = "sigma"
+  sigma = "NAME"
+  ps = "NAME"
+  ptop = 0.0"""
 
 
 def _is_pressure(coord):
@@ -69,7 +211,7 @@ def runs_upward(pressure, dim):
     return first > last
 
 
-def on_levels(name, field, reference_dim, reference_pressure, notes):
+def on_levels(name, field, reference_dim, reference_pressure, notes, reference_count=None):
     """A field on the levels of the temperature.
 
     Parameters
@@ -79,6 +221,7 @@ def on_levels(name, field, reference_dim, reference_pressure, notes):
     reference_dim : dimension of the levels of the temperature
     reference_pressure : DataArray over it (1-D) to align pressure levels by, or None
     notes : list that receives what was filled
+    reference_count : number of these levels
 
     Returns
     -------
@@ -92,9 +235,14 @@ def on_levels(name, field, reference_dim, reference_pressure, notes):
     own = data.coords.get(field.level_dim)
     alignable = reference_pressure is not None and own is not None and own.ndim == 1 and _is_pressure(own)
     if not alignable:
-        if field.level_dim != reference_dim or data.sizes[reference_dim] < 1:
+        count = reference_count or data.sizes.get(reference_dim, 0)
+        if field.level_dim == reference_dim and data.sizes[reference_dim] == count:
+            return data
+        data = on_full_levels(field, data, reference_dim, count, name)
+        if data is None:
             notes.append(f"{field.name}: on other levels ({field.level_dim}) than the temperature; not used")
-            return None
+        else:
+            notes.append(f"{name}: {field.name} lies between the levels; means of neighbours are taken on them")
         return data
     pressure = convert(own.values.astype(float), own.attrs["units"], "Pa", field.name)
     wanted = reference_pressure.values
