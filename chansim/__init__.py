@@ -14,7 +14,8 @@ from chansim.errors import ChansimError
 from chansim.output import open_result
 from chansim.satellite import Detector, simulate_on_grid
 from chansim.scene.profiles import scene_from_profile
-from chansim.scene.reading import describe_scene, open_scene
+from chansim.scene.inferred_cloud import cloud_boundaries, with_inferred_cloud
+from chansim.scene.reading import describe_scene, open_scene, scene_members, scene_times
 from chansim.simulate import Settings, simulate
 
 __all__ = [
@@ -22,11 +23,15 @@ __all__ = [
     "Detector",
     "Settings",
     "__version__",
+    "cloud_boundaries",
     "describe_scene",
     "load_imager",
     "open_result",
     "open_scene",
     "scene_from_profile",
+    "scene_members",
+    "scene_times",
     "simulate",
     "simulate_on_grid",
+    "with_inferred_cloud",
 ]

@@ -70,6 +70,7 @@ def _add_scene(commands):
         ["chansim scene forecast.grib2"],
     )  # fmt: skip
     parser.add_argument("file", help="model file")
+    parser.add_argument("--time", help="one valid time, where the file holds several, e.g. 2026-06-21T12")
     parser.add_argument("--mapping", help="TOML file that names the variables of an unusual file")
 
 
@@ -105,7 +106,7 @@ def describe_channel(channel):
 def _scene(options):
     from chansim.scene.reading import describe_scene
 
-    print(describe_scene(options.file, mapping=options.mapping) if options.mapping else describe_scene(options.file))
+    print(describe_scene(options.file, time=options.time, mapping=options.mapping))
 
 
 if __name__ == "__main__":

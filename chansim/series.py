@@ -17,9 +17,7 @@ import zarr
 
 from chansim.errors import ChansimError, OutputError, SceneError
 from chansim.output import cf_ready, check_target, encoding, picture_dims, plain_strings, write_dataset
-from chansim.scene import grib
-from chansim.scene.reading import open_scene
-from chansim.scene.sources import file_kind, open_source
+from chansim.scene.reading import open_scene, scene_times
 
 EXISTING = ("keep", "replace", "continue")
 # what does not change from time to time
@@ -60,23 +58,7 @@ def times_of(source):
     ------
     SceneError : it cannot be opened
     """
-    if not isinstance(source, xr.Dataset) and file_kind(Path(source)) == "GRIB":
-        return list(grib.valid_times(grib.scan(Path(source))))
-    dataset = source if isinstance(source, xr.Dataset) else _dataset_of(source)
-    ensemble = {d: 0 for d in dataset.dims if d in ("number", "member", "realization", "ensemble")}
-    for name in ("valid_time", "time", "Time", "XTIME"):
-        if name in dataset.variables and np.issubdtype(dataset[name].dtype, np.datetime64):
-            return sorted(np.unique(dataset[name].values.astype("datetime64[s]")))
-    return list(open_source(dataset, select=ensemble).times)
-
-
-def _dataset_of(source):
-    kind = file_kind(Path(source))
-    options = {"engine": "zarr", "consolidated": None} if kind == "Zarr" else {}
-    try:
-        return xr.open_dataset(source, **options)
-    except (OSError, ValueError, RuntimeError) as error:
-        raise SceneError(f"{source}: cannot be read ({error})") from None
+    return scene_times(source)
 
 
 def frames_of(sources, times="all", *, members=None, **options):

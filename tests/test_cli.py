@@ -57,7 +57,7 @@ def test_simulation_prints_what_it_assumed(simulated, folder):
     assert "skin_temperature" in simulated.stdout and "not an observation" in simulated.stdout
     with xr.open_dataset(folder / "result.nc", engine="netcdf4") as result:
         assert result.channel.values.tolist() == ["wv063", "ir104", "ir123"]
-        assert result.attrs["view"] == "zenith angle 20 degrees everywhere"
+        assert result.attrs["view"] == "zenith angle 20 degrees everywhere, imager at azimuth 0 degrees"
 
 
 def test_output_that_exists_is_kept(simulated, folder):

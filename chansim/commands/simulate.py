@@ -47,6 +47,18 @@ def add_simulate(commands):
         choices=("scattering", "absorbing"),
         help="multiple scattering in cloud, or condensate that only absorbs (default: %(default)s)",
     )
+    parser.add_argument(
+        "--sunlight",
+        default="auto",
+        choices=("auto", "none"),
+        help="sunlight below 5 um: by the valid time, or night everywhere (default: %(default)s)",
+    )
+    parser.add_argument(
+        "--inferred-cloud",
+        metavar="THICKNESS",
+        help="for a file without condensate: cloud between its cloud-top and cloud-base pressure, 'opaque' or of this "
+        "visible optical thickness; columns where the two contradict each other stay clear and are counted",
+    )
     parser.add_argument("--co2", type=float, metavar="PPM", help="CO2 mole fraction instead of the default")
     parser.add_argument("--draw", metavar="FOLDER", help="draw maps of all channels to this folder as well")
 
@@ -117,6 +129,8 @@ def simulate_files(options):
     existing = existing_of(options)
     check_target(options.output, existing)
     scene = open_scene(options.file[0], time=options.time, mapping=options.mapping)
+    if options.inferred_cloud is not None:
+        scene = _with_cloud(scene, options)
     result = picture(scene)
     write_dataset(result, options.output, existing)
     print(summary(result, options.output))
@@ -124,6 +138,20 @@ def simulate_files(options):
         make_folder(options.draw)
         draw_all(result, Path(options.draw), "auto", "source", existing, sheet=True)
     return None
+
+
+def _with_cloud(scene, options):
+    """The scene with cloud between the pressures at cloud top and base that its file holds."""
+    from chansim.scene.inferred_cloud import cloud_boundaries, with_inferred_cloud
+
+    thickness = options.inferred_cloud
+    if thickness != "opaque":
+        try:
+            thickness = float(thickness)
+        except ValueError:
+            raise ChansimError(f"--inferred-cloud {thickness}: give 'opaque' or an optical thickness") from None
+    top, base = cloud_boundaries(options.file[0], time=options.time)
+    return with_inferred_cloud(scene, top, base, optical_thickness=thickness, upside_down="clear")
 
 
 def _picture(options):
@@ -134,7 +162,7 @@ def _picture(options):
 
     imager = load_imager(options.imager, split_list(options.channels))
     gases = {} if options.co2 is None else {"co2": options.co2 * 1e-6}
-    settings = Settings(solver=options.solver, gases=gases)
+    settings = Settings(solver=options.solver, sunlight=options.sunlight, gases=gases)
     if not has_grid(options):
         view = view_of(options)
         return lambda scene: simulate(scene, imager, view=view, settings=settings, progress=progress_bar())
@@ -177,6 +205,8 @@ def _simulate_series(options, picture):
 
     if options.time is not None:
         raise ChansimError("--time is for one picture; a series takes --times")
+    if options.inferred_cloud is not None:
+        raise ChansimError("--inferred-cloud is for one picture; run it time by time")
     if options.draw:
         raise ChansimError("--draw is for one picture; draw from a series with chansim draw or chansim animate")
     existing = existing_of(options)
