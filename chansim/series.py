@@ -270,9 +270,10 @@ class _Store:
             chunks = (1,) * count + tuple(
                 1 if d == "channel" else min(n, _LARGEST_CHUNK) for d, n in variable.sizes.items()
             )
-            empty = dask.array.full(shape, np.nan, dtype=variable.dtype, chunks=chunks)
+            nothing = np.nan if variable.dtype.kind == "f" else 1  # of quality flags: masked
+            empty = dask.array.full(shape, nothing, dtype=variable.dtype, chunks=chunks)
             variables[name] = ((*self.axes, *variable.dims), empty, variable.attrs)
-            chosen[name] = {"chunks": chunks, "fill_value": np.nan}
+            chosen[name] = {"chunks": chunks, "fill_value": nothing}
         variables[_DONE] = self._marks(np.int8, "1 where the time is simulated, 0 where it is still to come")
         variables[_DONE][2].update(flag_values=np.array([0, 1], dtype=np.int8), flag_meanings="pending simulated")
         variables[_MASKED] = self._marks(np.int32, "columns without a value")

@@ -103,7 +103,7 @@ def add_demo(commands):
 def _demo(options):
     from chansim.output import check_target, write_dataset
     from chansim.scene.reading import open_scene
-    from chansim.simulate import simulate
+    from chansim.simulate import Settings, simulate
 
     folder, existing = Path(options.folder), existing_of(options)
     make_folder(folder)
@@ -111,7 +111,8 @@ def _demo(options):
     check_target(output, existing)
     scene = open_scene(_DEMO_SCENE)
     view, channels = ("geostationary", 40.0), split_list(options.channels)
-    result = simulate(scene, "tarn", channels=channels, view=view, progress=progress_bar())
+    settings = Settings(subcolumns=6)  # a third of the usual number: the first run should be short
+    result = simulate(scene, "tarn", channels=channels, view=view, settings=settings, progress=progress_bar())
     write_dataset(result, output, existing)
     print(summary(result, output))
     draw_all(result, folder, "auto", "source", existing, sheet=True)
