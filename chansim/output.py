@@ -72,6 +72,10 @@ def write_dataset(dataset, path, existing="keep", *, unlimited=()):
     """
     path = Path(path)
     check_target(path, existing)
+    dataset = dataset.copy()
+    for variable in dataset.data_vars.values():  # a Zarr store keeps attributes as plain numbers
+        if "flag_masks" in variable.attrs:
+            variable.attrs["flag_masks"] = np.asarray(variable.attrs["flag_masks"], dtype=variable.dtype)
     dataset = cf_ready(dataset)
     try:
         temporary = Path(tempfile.mkdtemp(prefix=f".{path.stem}-", dir=path.parent)) / path.name
