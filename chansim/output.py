@@ -72,10 +72,6 @@ def write_dataset(dataset, path, existing="keep", *, unlimited=()):
     """
     path = Path(path)
     check_target(path, existing)
-    dataset = dataset.copy()
-    for variable in dataset.data_vars.values():  # a Zarr store keeps attributes as plain numbers
-        if "flag_masks" in variable.attrs:
-            variable.attrs["flag_masks"] = np.asarray(variable.attrs["flag_masks"], dtype=variable.dtype)
     dataset = cf_ready(dataset)
     try:
         temporary = Path(tempfile.mkdtemp(prefix=f".{path.stem}-", dir=path.parent)) / path.name
@@ -161,6 +157,8 @@ def cf_ready(dataset):
             attributes["coverage_content_type"] = "modelResult"
             if mapping:
                 attributes["grid_mapping"] = mapping
+        for flags in {"flag_masks", "flag_values"} & set(attributes):  # a Zarr store keeps them as plain numbers
+            attributes[flags] = np.asarray(attributes[flags], dtype=dataset[name].dtype)
         dataset[name].attrs = attributes
     for name in ("latitude", "longitude"):
         axis = [d for d in dims if d in dataset.coords and dataset[d].attrs.get("standard_name") == name and d != name]

@@ -45,22 +45,6 @@ class Frame:
     member: int | str | None = None
 
 
-def times_of(source):
-    """The valid times of a model file.
-
-    source : path or Dataset, see `chansim.open_scene`
-
-    Returns
-    -------
-    list of numpy.datetime64, ascending; empty when the source gives none
-
-    Raises
-    ------
-    SceneError : it cannot be opened
-    """
-    return scene_times(source)
-
-
 def frames_of(sources, times="all", *, members=None, **options):
     """What a series of model files holds, in the order of time.
 
@@ -99,7 +83,7 @@ def _frames(sources, times, options, member=None):
     holders = {}
     for source in sources:
         name = "Dataset" if isinstance(source, xr.Dataset) else str(source)
-        own = times_of(source)
+        own = scene_times(source)
         if not own:
             raise SceneError(f"{name}: tells no valid time and cannot be part of a series; simulate it on its own")
         for time in own:
@@ -241,7 +225,6 @@ class _Store:
         with xr.open_dataset(self.store, engine="zarr", consolidated=False, chunks={}) as whole:
             for variable in whole.variables.values():
                 variable.encoding = {}
-            whole[_DONE].attrs["flag_values"] = np.array([0, 1], dtype=np.int8)  # Zarr keeps them as plain numbers
             write_dataset(whole, self.path, "replace" if self.existing != "keep" else "keep", unlimited=("time",))
         shutil.rmtree(self.store)
 

@@ -11,7 +11,14 @@ from chansim.channels.absorption_tables import PRESSURES, TEMPERATURES, absorpti
 from chansim.channels.atlas import load_atlas
 from chansim.channels.imager import load_imager
 from chansim.errors import SceneError, ViewError
-from chansim.optics.condensate import SPECIES, condensate_moments, condensate_optics, effective_radii, radius_axis
+from chansim.optics.condensate import (
+    CLAMPED,
+    PARAMETRISED,
+    SPECIES,
+    condensate_moments,
+    condensate_optics,
+    effective_radii,
+)
 from chansim.optics.phase import SHORTWAVE, sunlit_optics
 from chansim.optics.surface import channel_emissivity
 from chansim.quality import flag_attributes, quality_flags
@@ -246,7 +253,7 @@ def _reference(slab, dims, count, given):
 def _clouds(slab, settings, dims, count, levels, pressure, temperature, counts):
     """Mixing ratios, ln effective radii (species, columns, levels), cloud fraction (columns, levels), size doubts.
 
-    The last are two (columns,) bool: a radius at the edge of the tables, a radius that the model does not give.
+    The last are two (columns,) bool: a radius outside the tables, a radius that the model does not give.
     """
     mixing = np.zeros((len(SPECIES), count, levels))
     for s, name in enumerate(SPECIES):
@@ -262,6 +269,7 @@ def _clouds(slab, settings, dims, count, levels, pressure, temperature, counts):
     }
     land = _columns(slab, "land_fraction", dims, count, 0.0)
     latitude = _columns(slab, "latitude", dims, count, 45.0)
+    flags = np.empty(mixing.shape, dtype=np.uint8)
     radius = effective_radii(
         mixing,
         fraction,
@@ -273,27 +281,11 @@ def _clouds(slab, settings, dims, count, levels, pressure, temperature, counts):
         settings.liquid_radius,
         settings.ice_radius,
         counts,
-        ice_habit=settings.ice_habit,
+        flags,
+        settings.ice_habit,
     )
-    return (mixing, np.log(radius), fraction), _size_doubts(mixing, fraction, radius, fields)
-
-
-def _size_doubts(mixing, fraction, radius, fields):
-    """Columns with an effective radius at the edge of the tables, and with one that the model does not give."""
-    there = (mixing > 0.0) & (fraction > 0.0)
-    clamped = np.zeros(mixing.shape[1], dtype=bool)
-    parametrised = np.zeros(mixing.shape[1], dtype=bool)
-    for s, species in enumerate(SPECIES):
-        first, step, size = radius_axis(species)
-        edges = np.exp(first), np.exp(first + step * (size - 1))
-        clamped |= (there[s] & ((radius[s] <= edges[0]) | (radius[s] >= edges[1]))).any(axis=1)
-        phase = species.removeprefix("cloud_")
-        known = np.zeros(there[s].shape, dtype=bool)
-        for name in (f"effective_radius_{phase}", f"number_{phase}"):
-            if fields.get(name) is not None:
-                known |= fields[name] > 0.0
-        parametrised |= (there[s] & ~known).any(axis=1)
-    return clamped, parametrised
+    doubts = tuple((flags & bit > 0).any(axis=(0, 2)) for bit in (CLAMPED, PARAMETRISED))
+    return (mixing, np.log(radius), fraction), doubts
 
 
 def _fraction_everywhere(mixing, fraction, counts):
@@ -335,8 +327,7 @@ class _Sunlight:
         if settings.solver == "absorbing":
             return cls(nothing, "left out: the absorbing solver does not scatter")
         time = _valid_time(scene)
-        given = hasattr(view, "solar") and view.solar(scene) is not None
-        if time is None and not given:
+        if time is None and not view.gives_sun:
             return cls(nothing, "left out: the scene has no valid time (night everywhere)")
         factor = 1.0 if time is None else float(np.mean(solar_distance_factor(time)))
         irradiance = np.zeros(wavenumber.size)
@@ -352,8 +343,9 @@ class _Sunlight:
         wind = _columns(slab, "wind_speed_10m", dims, count, 7.0)
         if not self.irradiance.any():
             return (dark, np.ones(count), sea, wind), np.full(count, np.nan)
-        angles = view.solar(slab) if hasattr(view, "solar") else None
-        if angles is None:
+        if view.gives_sun:
+            angles = view.solar(slab)
+        else:
             latitude, longitude = (_columns(slab, name, dims, count, np.nan) for name in ("latitude", "longitude"))
             angles = solar_angles(_times(slab, dims, count), latitude, longitude)
         solar_zenith, solar_azimuth = (np.asarray(a, dtype=float).reshape(count) for a in angles)

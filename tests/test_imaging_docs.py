@@ -3,17 +3,16 @@
 import re
 from pathlib import Path
 
+from doc_examples import run_examples
+
 PAGE = Path(__file__).parents[1] / "docs" / "maps.md"
 
 
 def test_examples_run(tmp_path, monkeypatch, capsys):
     monkeypatch.chdir(tmp_path)
     page = PAGE.read_text(encoding="utf-8")
-    examples = re.findall(r"```python\n(.*?)```", page, flags=re.DOTALL)
-    assert len(examples) >= 4
-    names = {}
-    for example in examples:
-        exec(compile(example, str(PAGE), "exec"), names)
+    count, _ = run_examples(PAGE)
+    assert count >= 4
     assert "exists and is kept" in capsys.readouterr().out
     made = {p.name for p in (tmp_path / "pictures").iterdir()}
     assert made == {"ir104.png", "cold_tops.png", "water_vapour.png", "sheet.png", "ir104-ir123.png", "from_space.png",

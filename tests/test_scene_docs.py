@@ -1,7 +1,8 @@
 """The examples of docs/reading_model_files.md, run in order in an empty folder."""
 
-import re
 from pathlib import Path
+
+from doc_examples import run_examples
 
 import chansim  # noqa: F401
 
@@ -10,11 +11,8 @@ PAGE = Path(__file__).parents[1] / "docs" / "reading_model_files.md"
 
 def test_examples_run(tmp_path, monkeypatch, capsys):
     monkeypatch.chdir(tmp_path)
-    examples = re.findall(r"```python\n(.*?)```", PAGE.read_text(encoding="utf-8"), flags=re.DOTALL)
-    assert len(examples) >= 10
-    names = {}
-    for example in examples:
-        exec(compile(example, str(PAGE), "exec"), names)
+    count, _ = run_examples(PAGE)
+    assert count >= 10
     printed = capsys.readouterr().out
     for piece in (
         "This source can be used.",

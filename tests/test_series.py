@@ -11,7 +11,8 @@ from scene_samples import isobaric_messages, pressure_level_file, write_grib
 import chansim
 from chansim.errors import OutputError, SceneError
 from chansim.imaging.maps import draw_channel
-from chansim.series import Frame, frames_of, simulate_series, times_of
+from chansim.scene.reading import scene_times
+from chansim.series import Frame, frames_of, simulate_series
 
 HOURS = [np.datetime64(f"2020-07-15T{h:02d}:00", "ns") for h in (12, 15, 18)]
 
@@ -197,9 +198,9 @@ def test_times_of_grib(tmp_path):
         for message in isobaric_messages("t", {1000: 288.0, 300: 230.0}, dataTime=hour)
     ]  # fmt: skip
     write_grib(tmp_path / "a.grib2", messages)
-    assert [str(t) for t in times_of(tmp_path / "a.grib2")] == ["2020-07-15T12:00:00", "2020-07-15T18:00:00"]
-    assert times_of(model_file(HOURS, [0, 1])) == HOURS
-    assert times_of(pressure_level_file()) == HOURS[:1]
+    assert [str(t) for t in scene_times(tmp_path / "a.grib2")] == ["2020-07-15T12:00:00", "2020-07-15T18:00:00"]
+    assert scene_times(model_file(HOURS, [0, 1])) == HOURS
+    assert scene_times(pressure_level_file()) == HOURS[:1]
 
 
 @pytest.mark.parametrize(

@@ -4,6 +4,7 @@ import re
 from pathlib import Path
 
 import numpy as np
+from doc_examples import run_examples
 
 PAGE = Path(__file__).parents[1] / "docs" / "view.md"
 
@@ -11,11 +12,8 @@ PAGE = Path(__file__).parents[1] / "docs" / "view.md"
 def test_examples_run(tmp_path, monkeypatch, capsys):
     monkeypatch.chdir(tmp_path)
     page = PAGE.read_text(encoding="utf-8")
-    examples = re.findall(r"```python\n(.*?)```", page, flags=re.DOTALL)
-    assert len(examples) >= 6
-    names = {}
-    for example in examples:
-        exec(compile(example, str(PAGE), "exec"), names)
+    count, names = run_examples(PAGE)
+    assert count >= 6
     printed = capsys.readouterr().out
     assert "sub-satellite longitudes from" in printed and "ir104 12 bits" in printed
     for name in ("result", "picture"):

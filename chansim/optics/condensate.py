@@ -77,9 +77,8 @@ def condensate_optics(wavenumber, ice_habit=HABITS[0]):
     """
     _check_habit(ice_habit)
     axis = np.array([radius_axis(species) for species in SPECIES])
-    most = int(axis[:, 2].max())
     out = [
-        np.stack([_at_nodes(f"{species}_{name}", wavenumber, most) for species in SPECIES])
+        np.stack([at_nodes(f"{species}_{name}", wavenumber) for species in SPECIES])
         for name in ("extinction", "albedo", "asymmetry")
     ]
     return (axis, *out)
@@ -91,14 +90,17 @@ def condensate_moments(wavenumber, ice_habit=HABITS[0], count=65):
     Raises OpticsError as `condensate_optics` does.
     """
     _check_habit(ice_habit)
-    most = int(max(radius_axis(species)[2] for species in SPECIES))
-    return np.stack([_at_nodes(f"{species}_moments", wavenumber, most)[..., :count] for species in SPECIES])
+    return np.stack([at_nodes(f"{species}_moments", wavenumber)[..., :count] for species in SPECIES])
 
 
-def _at_nodes(name, wavenumber, most):
-    """One table, linear in wavenumber, padded to `most` radii. OpticsError outside the tables."""
+def at_nodes(name, wavenumber, axis="wavenumber"):
+    """One table, linear in wavenumber, padded to the longest radius axis. OpticsError outside the tables.
+
+    axis : coordinate with the wavenumbers of the table
+    """
     tables = load_tables()
-    grid = tables["wavenumber"].values
+    grid = tables[axis].values
+    most = max(int(radius_axis(species)[2]) for species in SPECIES)
     wavenumber = np.asarray(wavenumber, dtype=float)
     outside = ~((wavenumber >= grid[0]) & (wavenumber <= grid[-1]))
     if outside.any():

@@ -2,8 +2,7 @@
 
 import numpy as np
 
-from chansim.errors import OpticsError
-from chansim.optics.condensate import SPECIES, condensate_moments, load_tables, radius_axis
+from chansim.optics.condensate import SPECIES, at_nodes, condensate_moments, load_tables, radius_axis
 from chansim.optics.refractive_index import refractive_index
 
 SHORTWAVE = 2000.0  # cm-1: below 5 um sunlight matters
@@ -26,25 +25,11 @@ def condensate_phase(wavenumber):
     ------
     OpticsError : wavenumber outside the tables
     """
-    tables = load_tables()
-    grid = tables["solar_wavenumber"].values
-    wavenumber = np.asarray(wavenumber, dtype=float)
-    if wavenumber.size and not (grid[0] <= wavenumber.min() and wavenumber.max() <= grid[-1]):
-        raise OpticsError(
-            f"phase functions are tabulated from {grid[0]:g} to {grid[-1]:g} cm-1, a channel needs "
-            f"{wavenumber.min():g} to {wavenumber.max():g}"
-        )
-    i = np.clip(np.searchsorted(grid, wavenumber) - 1, 0, grid.size - 2)
-    w = ((wavenumber - grid[i]) / (grid[i + 1] - grid[i]))[None, :, None]
-    most = int(max(radius_axis(species)[2] for species in SPECIES))
-    out = np.empty((len(SPECIES), most, wavenumber.size, tables.sizes["angle"]))
+    out = [at_nodes(f"{_LIKE.get(species, species)}_phase", wavenumber, "solar_wavenumber") for species in SPECIES]
     for s, species in enumerate(SPECIES):
-        values = tables[f"{_LIKE.get(species, species)}_phase"].values.astype(float)
-        at = values[:, i] * (1.0 - w) + values[:, i + 1] * w
         if species in _LIKE:
-            at = at[-1:]
-        out[s] = np.pad(at, [(0, most - at.shape[0]), (0, 0), (0, 0)], mode="edge")
-    return out
+            out[s][:] = out[s][-1]  # the last radius is the largest
+    return np.stack(out)
 
 
 def sunlit_optics(wavenumber, irradiance, ice_habit, streams):

@@ -61,6 +61,7 @@ def associated_legendre(m, count, x, out):
         )
 
 
+@njit(cache=True)
 def work_arrays(streams):
     """Work space of the solver: (matrices, vectors)."""
     return np.zeros((20, streams, streams)), np.zeros((32, streams))
@@ -88,9 +89,7 @@ def delta_scaled(extinction, albedo, moments, count, scaled):
 # rows of the matrix work space
 _T, _R, _X, _Y, _GE, _GO, _A, _B, _L, _V, _M1, _M2, _STACK, _G, _M = range(15)
 # rows of the vector work space
-_K, _TH, _ONE, _GS, _GD, _I1, _I2, _VT, _VR, _VE, _VO, _SU, _SD, _U1, _U2, _U3, _D, _WV, _MM, _EK, _NEW, _PHI, _PSI = (
-    range(23)
-)
+_K, _TH, _ONE, _GS, _GD, _I1, _I2, _VT, _VR, _VE, _VO, _SU, _SD, _U1, _U2, _U3, _D, _WV, _MM, _EK, _NEW = range(21)
 
 
 @njit(cache=True)
@@ -267,6 +266,17 @@ def thermal_source(n, tau, albedo, slant, direct, above, below, matrices, vector
 
 
 @njit(cache=True)
+def begin_column(n, mu, weight, matrices, vectors, state):
+    """An empty stack of layers: nothing seen yet, nothing in the way."""
+    for i in range(n):
+        vectors[_ONE, i] = math.sqrt(weight[i] * mu[i])
+        vectors[_D, i], vectors[_WV, i] = 0.0, 0.0
+        for j in range(n):
+            matrices[_STACK, i, j] = 0.0
+    state[0], state[1] = 0.0, 1.0
+
+
+@njit(cache=True)
 def add_clear_layer(n, tau, slant, above, below, bend, mu, one, stack, scattering, matrices, vectors, state):
     """Put an absorbing layer under the stack. state : view radiance, direct transmittance."""
     path = tau * slant
@@ -368,11 +378,11 @@ def _interpolation_weights(n, mu, x, out):
 
 
 @njit(cache=True)
-def _surface(n, emitted, reflectance, beam, beam_seen, mirror, mu, view_cosine, stack, vectors, state):
+def _surface(n, emitted, reflectance, beam, mirror, mu, view_cosine, stack, vectors, state):
     """Close the column with a surface that reflects diffusely.
 
     mirror : share of the downwelling that the view's direct path sees reflected like in a mirror (sea) [1]
-    beam, beam_seen : reflected sunlight, diffuse and toward the view
+    beam : radiance of reflected sunlight; what of it goes straight to the view is left to the caller
     """
     one = vectors[_ONE]
     down, back = 0.0, 0.0
@@ -391,7 +401,7 @@ def _surface(n, emitted, reflectance, beam, beam_seen, mirror, mu, view_cosine, 
                 total += stack[i, j] * one[j] * up
             falling += vectors[_U1, i] * total / one[i]
         seen += mirror * (emitted + reflectance * max(falling, 0.0) - seen)
-    state[0] += state[1] * (seen + beam_seen)
+    state[0] += state[1] * seen
     for i in range(n):
         state[0] += vectors[_WV, i] * one[i] * up
 
@@ -425,12 +435,7 @@ def thermal_radiance(
     stack, scaled = matrices[_STACK], np.empty(2 * n)
     view_legendre = np.empty(2 * n)
     associated_legendre(0, 2 * n, view_cosine, view_legendre)
-    for i in range(n):
-        vectors[_ONE, i] = math.sqrt(weight[i] * mu[i])
-        vectors[_D, i], vectors[_WV, i] = 0.0, 0.0
-        for j in range(n):
-            stack[i, j] = 0.0
-    state[0], state[1] = 0.0, 1.0
+    begin_column(n, mu, weight, matrices, vectors, state)
     scattering = False
     for j in range(tau_gas.size):
         total = tau_gas[j] + cloud_tau[j]
@@ -451,5 +456,5 @@ def thermal_radiance(
                 scattering, matrices, vectors, state
             )  # fmt: skip
     emitted = emissivity * planck_surface
-    _surface(n, emitted, 1.0 - emissivity, 0.0, 0.0, mirror, mu, view_cosine, stack, vectors, state)
+    _surface(n, emitted, 1.0 - emissivity, 0.0, mirror, mu, view_cosine, stack, vectors, state)
     return state[0]

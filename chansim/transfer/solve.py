@@ -28,6 +28,7 @@ from chansim.transfer.absorbing import (
 from chansim.transfer.columns import build_levels, hydrostatic_heights, layer_amounts, layer_secants
 from chansim.transfer.overlap import fill_subcolumn
 from chansim.transfer.scattering import thermal_radiance
+from chansim.transfer.scattering import work_arrays as scattering_work_arrays
 from chansim.transfer.sunlight import clear_sunlight, cloudy_sunlight, toward_imager
 from chansim.transfer.sunlight import work_arrays as sunlight_work_arrays
 
@@ -612,8 +613,8 @@ def _work_arrays(model_levels, ref_levels, gases, species, nodes, sunlit_nodes, 
     cloud_work = (np.empty(model_levels, dtype=np.bool_), np.empty((size, species)), np.zeros((size, species)), fields,
                   np.empty((subcolumns + 1, model_levels), dtype=np.bool_), np.empty(subcolumns + 1),
                   np.zeros(model_levels), np.empty((2, size)), np.empty(size, dtype=np.bool_))  # fmt: skip
-    solver_work = (np.zeros((20, streams, streams)), np.zeros((32, streams)), np.zeros((size, 2 * streams + 1)),
-                   np.zeros(2))  # fmt: skip
+    matrices, vectors = scattering_work_arrays(streams)
+    solver_work = (matrices, vectors, np.zeros((size, 2 * streams + 1)), np.zeros(2))
     solar_work = (np.empty(nodes), sunlight_work_arrays(solar_streams, size),
                   np.zeros((sunlit_nodes, size, 2 * solar_streams + 1)), np.zeros((sunlit_nodes, size)))  # fmt: skip
     return level_work, gas_work, clear_work, cloud_work, solver_work, solar_work

@@ -17,7 +17,6 @@ from chansim.transfer.scattering import (
     _GD,
     _GS,
     _K,
-    _ONE,
     _R,
     _SD,
     _STACK,
@@ -31,10 +30,12 @@ from chansim.transfer.scattering import (
     _surface,
     add_scattering_layer,
     associated_legendre,
+    begin_column,
     delta_scaled,
     layer_operators,
     mean_exponential,
 )
+from chansim.transfer.scattering import work_arrays as scattering_work_arrays
 
 _SMALLEST_MODE = 2e-3  # of the sum so far: where the series over azimuth modes stops
 _DEEPEST = 8.0  # e-foldings of diffuse light: what lies deeper cannot be seen
@@ -162,7 +163,7 @@ def scattered_once(tau_gas, secant, cloud_tau, cloud_albedo, moments, phase, cou
     -------
     radiance for unit irradiance [sr-1], transmittance
     """
-    airmass = min(sun_airmass(sun_cosine), 1.0 / sun_cosine)
+    airmass = sun_airmass(sun_cosine)
     seen, through = 0.0, 1.0
     for j in range(tau_gas.size):
         total = tau_gas[j] + cloud_tau[j]
@@ -196,12 +197,7 @@ def _one_mode(n, m, found, layers, scaled, sun_cosine, reflectance, view_cosine,
     mu, weight, legendre = quad
     matrices, vectors = work
     stack, sun_secant, beam = matrices[_STACK], 1.0 / sun_cosine, 1.0
-    for i in range(n):
-        vectors[_ONE, i] = math.sqrt(weight[i] * mu[i])
-        vectors[_D, i], vectors[_WV, i] = 0.0, 0.0
-        for j in range(n):
-            stack[i, j] = 0.0
-    state[0], state[1] = 0.0, 1.0
+    begin_column(n, mu, weight, matrices, vectors, state)
     for s in range(found + 1):
         if layers[s, 3] > 0.0:
             _add_gap(n, layers[s, 3], layers[s, 4], mu, stack, vectors, state)
@@ -219,7 +215,7 @@ def _one_mode(n, m, found, layers, scaled, sun_cosine, reflectance, view_cosine,
         beam *= math.exp(-tau * sun_secant)
     if m == 0 and reflectance > 0.0:
         reflected = reflectance * sun_cosine * beam / math.pi
-        _surface(n, 0.0, reflectance, reflected, 0.0, 0.0, mu, view_cosine, stack, vectors, state)
+        _surface(n, 0.0, reflectance, reflected, 0.0, mu, view_cosine, stack, vectors, state)
     return state[0]
 
 
@@ -233,7 +229,7 @@ def scattered_more(
     """
     n = quad[0].size
     operators, layers, scaled, state = work
-    airmass = min(sun_airmass(sun_cosine), 1.0 / sun_cosine)
+    airmass = sun_airmass(sun_cosine)
     found, ground = _scattering_layers(
         tau_gas, secant, cloud_tau, cloud_albedo, moments, airmass, 2 * n, layers, scaled
     )
@@ -295,7 +291,7 @@ def solar_radiance(
 @njit(cache=True)
 def work_arrays(streams, layers):
     """Work space of `solar_radiance`: (operators, layers, scaled moments, state)."""
-    operators = (np.zeros((20, streams, streams)), np.zeros((32, streams)))
+    operators = scattering_work_arrays(streams)
     return operators, np.zeros((layers + 1, 6)), np.zeros((layers + 1, 2 * streams)), np.zeros(2)
 
 
@@ -319,7 +315,7 @@ def clear_sunlight(layers, tau, secant, sun_cosine, ground, irradiance, weight, 
     tau : (layers, nodes of the channel); ground : (nodes of the channel,) from `toward_imager` [sr-1]
     irradiance, weight : (all nodes,)
     """
-    airmass = min(sun_airmass(sun_cosine), 1.0 / sun_cosine)
+    airmass = sun_airmass(sun_cosine)
     radiance = 0.0
     for i in range(last - first):
         path = 0.0
@@ -343,13 +339,9 @@ def cloudy_sunlight(
     sun_cosine, azimuth_cosine, view_cosine = geometry
     radiance = 0.0
     for i in range(last - first):
-        once, through = scattered_once(
+        value = solar_radiance(
             tau[:layers, i], secant[:layers], cloud_tau[:layers, i], cloud_albedo[:layers, i], moments[i, :layers],
-            phase[i, :layers], 2 * quad[0].size, sun_cosine
+            phase[i, :layers], sun_cosine, azimuth_cosine, reflectance, ground[i], view_cosine, quad, work
         )  # fmt: skip
-        more = scattered_more(
-            tau[:layers, i], secant[:layers], cloud_tau[:layers, i], cloud_albedo[:layers, i], moments[i, :layers],
-            sun_cosine, azimuth_cosine, reflectance, view_cosine, quad, work
-        )  # fmt: skip
-        radiance += weight[first + i] * irradiance[first + i] * (once + more + through * sun_cosine * ground[i])
+        radiance += weight[first + i] * irradiance[first + i] * value
     return radiance

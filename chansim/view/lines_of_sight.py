@@ -8,6 +8,8 @@ import xarray as xr
 from chansim.errors import ViewError
 from chansim.view.angles import LARGEST_ZENITH, geostationary_angles, geostationary_zenith
 
+_SOLAR_ANGLES = ("solar_zenith_angle", "solar_azimuth_angle")
+
 
 @dataclass(frozen=True)
 class FixedZenith:
@@ -16,6 +18,7 @@ class FixedZenith:
     angle: float = 0.0
     largest_zenith: float = LARGEST_ZENITH
     direction: float = 0.0
+    gives_sun = False
 
     def zenith(self, columns):
         """View zenith angle of the columns [degrees]."""
@@ -38,6 +41,7 @@ class Geostationary:
 
     longitude: float
     largest_zenith: float = LARGEST_ZENITH
+    gives_sun = False
 
     def zenith(self, columns):
         """View zenith angle of the columns [degrees]; above 90 where the satellite is below the horizon."""
@@ -77,12 +81,14 @@ class GivenAngles:
             )
         return self._of("view_azimuth_angle", columns)
 
+    @property
+    def gives_sun(self):
+        """True where the sun's angles are given, too."""
+        return all(name in self.angles for name in _SOLAR_ANGLES)
+
     def solar(self, columns):
-        """Given solar zenith and azimuth angles [degrees], or None."""
-        names = ("solar_zenith_angle", "solar_azimuth_angle")
-        if not all(name in self.angles for name in names):
-            return None
-        return tuple(self._of(name, columns) for name in names)
+        """Given solar zenith and azimuth angles of the columns [degrees]."""
+        return tuple(self._of(name, columns) for name in _SOLAR_ANGLES)
 
     def _of(self, name, columns):
         latitude = columns["latitude"]
